@@ -5,8 +5,9 @@ so a stepped wall clock cannot move a period.
 
 Period instants (runtime, section 2), with Ts the period and all times in nanoseconds:
 
-    k0     = ceil((wall + lead) / Ts)              first period after the lead, the same k on every host
-    origin = monotonic + (k0 Ts − wall) − k0 Ts    so that  due(k) = origin + k Ts
+    origin = monotonic − wall                      both read once, at start
+    due(k) = origin + k Ts                         k counts periods of the Unix epoch: the same k on every host
+    k0     = ceil((wall + lead) / Ts)              the first period driven
 """
 
 from __future__ import annotations

@@ -1,0 +1,85 @@
+"""The compiled loops of the synthesis; nothing here decides anything.
+
+Symbols as in `controllers.synthesis`; all row arrays have shape (R,) and live in weighted rows. Localities are stored
+flat: contribution i touches `touched[at[i]:at[i+1]]`, its basis starts at `basis[basis_at[i]]`, row-major, with
+`freedom[i]` columns. Kernels release the interpreter lock, so that the event loop keeps its time while they run.
+The plain-numpy form of each stands in the tests as its oracle.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numba import njit
+
+from controllers.arrays import Floats, Ints
+
+
+@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nsz"})
+def project(source: Floats, out: Floats, touched: Ints, at: Ints, basis: Floats, basis_at: Ints, freedom: Ints) -> None:  # pragma: no cover
+    """out = G source,  G = sum_i S_i' N_i N_i' S_i."""
+    out[:] = 0.0
+    coefficients = np.empty(freedom.max())
+    for i in range(len(freedom)):
+        width = freedom[i]
+        first = at[i]
+        count = at[i + 1] - first
+        coefficients[:width] = 0.0
+        start = basis_at[i]
+        for r in range(count):
+            value = source[touched[first + r]]
+            for k in range(width):
+                coefficients[k] += value * basis[start + k]
+            start += width
+        start = basis_at[i]
+        for r in range(count):
+            total = 0.0
+            for k in range(width):
+                total += basis[start + k] * coefficients[k]
+            out[touched[first + r]] += total
+            start += width
+
+
+@njit(nogil=True, cache=True)
+def iterate(  # pragma: no cover
+    count: int,
+    relax: float,
+    z: Floats,
+    y: Floats,
+    l: Floats,  # noqa: E741 - the symbol of the package head
+    beta: Floats,
+    g: Floats,
+    copies: Floats,
+    penalty: Floats,
+    price: Floats,
+    target: Floats,
+    soft_price: Floats,
+    soft_lower: Floats,
+    soft_upper: Floats,
+    lower: Floats,
+    upper: Floats,
+    touched: Ints,
+    at: Ints,
+    basis: Floats,
+    basis_at: Ints,
+    freedom: Ints,
+) -> None:
+    """Run `count` passes of (4) in place: row step by rule (5), column step by G, multipliers."""
+    for _ in range(count):
+        for r in range(len(z)):
+            a = y[r] - l[r]
+            p, q = penalty[r], price[r]
+            pull = p * a + 2.0 * q * target[r]
+            v = pull / (p + 2.0 * q)
+            if v > soft_upper[r]:
+                s = soft_price[r]
+                v = (pull + 2.0 * s * soft_upper[r]) / (p + 2.0 * q + 2.0 * s)
+            elif v < soft_lower[r]:
+                s = soft_price[r]
+                v = (pull + 2.0 * s * soft_lower[r]) / (p + 2.0 * q + 2.0 * s)
+            v = min(max(v, lower[r]), upper[r])
+            z[r] = v
+            beta[r] = (relax * (v - y[r]) + l[r]) / copies[r]
+        project(beta, g, touched, at, basis, basis_at, freedom)
+        for r in range(len(z)):
+            y[r] += g[r]
+            l[r] = copies[r] * beta[r] - g[r]

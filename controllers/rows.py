@@ -1,0 +1,295 @@
+"""Rows: everything that is priced or limited, one number at one step of the horizon.
+
+A **quantity** is a linear functional of one section's outputs, states, inputs or moves. Over a horizon of T steps it
+becomes T rows: outputs and states at t = 1..T, inputs and moves at t = 0..T−1, a move being u_t − u_{t−1} with u_{−1}
+what was written last. Row r costs, in spans (value / span of the quantity),
+
+    f_r(z) = q_r (z − c_r)² + s_r dist(z, [a_r, b_r])²    on  lo_r ≤ z ≤ hi_r                        (2)
+
+q price, c target, [a, b] soft band with price s, [lo, hi] hard limits. Which rows there are is structure and belongs
+to the design (`RowTable`); their numbers are data of one period (`RowData`) and may change at every solve.
+
+State and output limits should be soft: a hard limit on a measured quantity is infeasible as soon as a disturbance
+pushes the plant past it. Input and move limits should be hard: the plant cannot do more anyway.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from enum import Enum
+from functools import cached_property
+from math import inf
+
+import numpy as np
+import numpy.typing as npt
+from scipy import sparse
+
+from controllers.arrays import Floats, Ints
+from controllers.exceptions import RowError
+from controllers.network import Network
+
+
+class Of(Enum):
+    """What a quantity is a functional of."""
+
+    OUTPUT = "output"
+    STATE = "state"
+    INPUT = "input"
+    MOVE = "move"
+
+    @property
+    def ahead(self) -> bool:
+        """Whether its steps are t = 1..T (outputs, states) rather than t = 0..T−1 (inputs, moves)."""
+        return self in (Of.OUTPUT, Of.STATE)
+
+
+@dataclass(frozen=True)
+class Quantity:
+    """One priced or limited quantity and its usual numbers, all in the network's units.
+
+    Attributes:
+        name: how it is addressed, unique in a table.
+        section: the section it belongs to.
+        of: outputs, states, inputs or moves of that section.
+        mix: coefficients over them; (1.0,) is the first.
+        span: engineering range; rows are scaled by it.
+        weight: weight of its rows in the norm of the split; a matter of speed only, never of the optimum.
+        price: q, per span squared; one number or one per step.
+        target: c.
+        soft: [a, b], and `soft_price` s.
+        hard: [lo, hi].
+    """
+
+    name: str
+    section: str
+    of: Of
+    mix: tuple[float, ...] = (1.0,)
+    span: float = 1.0
+    weight: float = 1.0
+    price: float | tuple[float, ...] = 0.0
+    target: float = 0.0
+    soft: tuple[float, float] = (-inf, inf)
+    soft_price: float = 0.0
+    hard: tuple[float, float] = (-inf, inf)
+
+    def __post_init__(self) -> None:
+        prices = np.atleast_1d(np.asarray(self.price, dtype=float))
+        problems = (
+            (not np.isfinite(self.mix).all() or not any(self.mix), f"mix is {self.mix}", "give finite coefficients, not all zero"),
+            (not 0 < self.span < inf, f"span is {self.span}", "give a positive, finite span"),
+            (not 0 < self.weight < inf, f"weight is {self.weight}", "give a positive, finite weight"),
+            (not (np.isfinite(prices).all() and (prices >= 0).all()), f"price is {self.price}", "give zero or more"),
+            (not np.isfinite(self.target), f"target is {self.target}", "give a finite target"),
+            (not 0 <= self.soft_price < inf, f"soft_price is {self.soft_price}", "give zero or more"),
+            (not self.soft[0] <= self.soft[1], f"soft band is {self.soft}", "give (lower, upper) with lower <= upper"),
+            (not self.hard[0] <= self.hard[1], f"hard limits are {self.hard}", "give (lower, upper) with lower <= upper"),
+        )
+        for wrong, read, fix in problems:
+            if wrong:
+                raise RowError(f"quantity {self.name!r}: {read}; {fix}")
+
+
+@dataclass(frozen=True)
+class RowData:
+    """The numbers of (2) for every row, in spans: arrays of shape (R,)."""
+
+    price: Floats
+    target: Floats
+    soft_price: Floats
+    soft_lower: Floats
+    soft_upper: Floats
+    lower: Floats
+    upper: Floats
+
+    def cost(self, z: Floats) -> float:
+        """Evaluate the sum of (2) at z, (R,) in spans, leaving hard limits aside."""
+        outside = np.maximum(self.soft_lower - z, 0.0) + np.maximum(z - self.soft_upper, 0.0)
+        return float(self.price @ (z - self.target) ** 2 + self.soft_price @ outside**2)
+
+
+@dataclass(frozen=True)
+class RowTable:
+    """All rows of a design: quantities in the order of their sections, each with its T steps in a block.
+
+    Rows are linear in the trajectory: z = Qx x_{1..T} + Qu u_{0..T-1} − (moves at t = 0) u_{-1}, see `maps`.
+    """
+
+    network: Network
+    quantities: tuple[Quantity, ...]
+    horizon: int
+
+    @classmethod
+    def build(cls, network: Network, quantities: Sequence[Quantity], horizon: int) -> RowTable:
+        """Order the quantities by section and check them against the network.
+
+        Raises:
+            RowError: a name stands twice, a mix or a price sequence has the wrong length, or there is no row.
+            NetworkError: a section is unknown.
+        """
+        if horizon < 2:
+            raise RowError(f"horizon is {horizon}; give 2 steps or more")
+        if not quantities:
+            raise RowError("no quantity is priced or limited; give at least one")
+        seen: set[str] = set()
+        for quantity in quantities:
+            if quantity.name in seen:
+                raise RowError(f"quantity {quantity.name!r} stands twice; names must be unique")
+            seen.add(quantity.name)
+            _check_sizes(network, quantity, horizon)
+        ordered = sorted(quantities, key=lambda quantity: network.index(quantity.section))
+        return cls(network, tuple(ordered), horizon)
+
+    @property
+    def count(self) -> int:
+        """Number of rows R."""
+        return len(self.quantities) * self.horizon
+
+    @cached_property
+    def _position(self) -> dict[str, int]:
+        return {quantity.name: k for k, quantity in enumerate(self.quantities)}
+
+    def rows_of(self, name: str) -> slice:
+        """Rows of one quantity, step by step.
+
+        Raises:
+            RowError: no quantity has this name.
+        """
+        if name not in self._position:
+            raise RowError(f"no quantity is called {name!r}")
+        first = self._position[name] * self.horizon
+        return slice(first, first + self.horizon)
+
+    @cached_property
+    def section(self) -> Ints:
+        """Section of every row, (R,)."""
+        return np.repeat([self.network.index(q.section) for q in self.quantities], self.horizon).astype(np.int64)
+
+    @cached_property
+    def span(self) -> Floats:
+        """Span of every row, (R,)."""
+        return np.repeat([q.span for q in self.quantities], self.horizon).astype(float)
+
+    @cached_property
+    def weight(self) -> Floats:
+        """Weight of every row in the norm of the split, (R,)."""
+        return np.repeat([q.weight for q in self.quantities], self.horizon).astype(float)
+
+    @cached_property
+    def following(self) -> Ints:
+        """(R,) the row one step later of the same quantity; the last row follows itself. Shifts a plan by one period."""
+        steps = np.minimum(np.arange(self.horizon) + 1, self.horizon - 1)
+        return (np.arange(len(self.quantities))[:, None] * self.horizon + steps).reshape(-1).astype(np.int64)
+
+    def data(self) -> RowData:
+        """Return the usual numbers of all quantities, in spans."""
+        per = {
+            "price": [np.broadcast_to(q.price, self.horizon) for q in self.quantities],
+            "target": [np.full(self.horizon, q.target / q.span) for q in self.quantities],
+            "soft_price": [np.full(self.horizon, q.soft_price) for q in self.quantities],
+            "soft_lower": [np.full(self.horizon, q.soft[0] / q.span) for q in self.quantities],
+            "soft_upper": [np.full(self.horizon, q.soft[1] / q.span) for q in self.quantities],
+            "lower": [np.full(self.horizon, q.hard[0] / q.span) for q in self.quantities],
+            "upper": [np.full(self.horizon, q.hard[1] / q.span) for q in self.quantities],
+        }
+        return RowData(**{name: np.concatenate(parts).astype(float) for name, parts in per.items()})
+
+    def retarget(self, data: RowData, targets: dict[str, float]) -> RowData:
+        """Return `data` with other targets, in the quantities' own units."""
+        target = data.target.copy()
+        for name, value in targets.items():
+            rows = self.rows_of(name)
+            target[rows] = value / self.span[rows]
+        return replace(data, target=target)
+
+    def confine(self, data: RowData, limits: dict[str, tuple[npt.ArrayLike, npt.ArrayLike]]) -> RowData:
+        """Return `data` with other hard limits: per quantity a lower and an upper value, one number or one per step.
+
+        Equal limits hold an input at a known value, and everybody plans around it: nothing is factorised again.
+
+        Raises:
+            RowError: a lower limit lies above its upper one.
+        """
+        lower, upper = data.lower.copy(), data.upper.copy()
+        for name, (low, high) in limits.items():
+            rows = self.rows_of(name)
+            lower[rows], upper[rows] = np.asarray(low) / self.span[rows], np.asarray(high) / self.span[rows]
+            if not (lower[rows] <= upper[rows]).all():
+                raise RowError(f"quantity {name!r}: hard limits {low} .. {high} are crossed; give lower <= upper")
+        return replace(data, lower=lower, upper=upper)
+
+    @cached_property
+    def maps(self) -> tuple[sparse.csr_array, sparse.csr_array, sparse.csr_array]:
+        """Qx (R, T n), Qu (R, T m) and Qp (R, m): z = Qx x_{1..T} + Qu u_{0..T-1} + Qp u_{-1}, in spans, time outermost."""
+        net, steps = self.network, self.horizon
+        n, m = net.a.shape[0], net.b.shape[1]
+        x_blocks, u_blocks, p_blocks = [], [], []
+        eye, shift = sparse.eye_array(steps, format="csr"), sparse.eye_array(steps, k=-1, format="csr")
+        first = sparse.csr_array(([1.0], ([0], [0])), shape=(steps, 1))
+        none_x, none_u = sparse.csr_array((steps, steps * n)), sparse.csr_array((steps, steps * m))
+        none_p = sparse.csr_array((steps, m))
+        for quantity in self.quantities:
+            functional = _functional(net, quantity)
+            if quantity.of.ahead:
+                x_blocks.append(sparse.kron(eye, functional, format="csr"))
+                u_blocks.append(none_u)
+                p_blocks.append(none_p)
+                continue
+            moved = eye - shift if quantity.of is Of.MOVE else eye
+            x_blocks.append(none_x)
+            u_blocks.append(sparse.kron(moved, functional, format="csr"))
+            p_blocks.append(-sparse.kron(first, functional, format="csr") if quantity.of is Of.MOVE else none_p)
+        stack = [sparse.csr_array(sparse.vstack(blocks, format="csr")) for blocks in (x_blocks, u_blocks, p_blocks)]
+        return stack[0], stack[1], stack[2]
+
+
+def _functional(net: Network, quantity: Quantity) -> sparse.csr_array:
+    """(1, n) or (1, m) row vector that gives the quantity, in spans."""
+    i = net.index(quantity.section)
+    mix = np.asarray(quantity.mix)[None, :] / quantity.span
+    if quantity.of is Of.OUTPUT:
+        return sparse.csr_array(sparse.csr_array(mix) @ net.c[net.y_at[i] : net.y_at[i + 1], :])
+    at, width = (net.x_at, net.a.shape[0]) if quantity.of is Of.STATE else (net.u_at, net.b.shape[1])
+    columns = np.arange(at[i], at[i + 1])
+    return sparse.csr_array((mix[0], (np.zeros(len(columns), dtype=int), columns)), shape=(1, width))
+
+
+def _check_sizes(network: Network, quantity: Quantity, horizon: int) -> None:
+    i = network.index(quantity.section)
+    at = {Of.OUTPUT: network.y_at, Of.STATE: network.x_at, Of.INPUT: network.u_at, Of.MOVE: network.u_at}[quantity.of]
+    have = int(at[i + 1] - at[i])
+    if len(quantity.mix) != have:
+        raise RowError(
+            f"quantity {quantity.name!r}: mix has {len(quantity.mix)} coefficients, but section {quantity.section!r} has "
+            f"{have} {quantity.of.value.replace('move', 'input')}s; give one each"
+        )
+    if np.ndim(quantity.price) == 1 and np.size(quantity.price) != horizon:
+        raise RowError(f"quantity {quantity.name!r}: {np.size(quantity.price)} prices for {horizon} steps; give one number or one per step")
+
+
+class Region(Enum):
+    """Where the row rule left an input."""
+
+    LOWER = "at lower limit"
+    FREE = "free"
+    UPPER = "at upper limit"
+
+
+def row_rule(a: Floats, penalty: Floats, data: RowData) -> Floats:
+    """Closed-form minimiser of f_r(z) + (p/2)(z − a)² for every row, rule (5); the oracle of the compiled kernel.
+
+    Explicit solution of the row problem with three regions and a clip: arXiv:2005.13807.
+
+    Args:
+        a: where each row is pulled to, (R,) in spans.
+        penalty: p, (R,).
+        data: numbers of (2).
+    """
+    q, s = data.price, data.soft_price
+    pull = penalty * a + 2 * q * data.target
+    free = pull / (penalty + 2 * q)
+    with np.errstate(invalid="ignore"):  # an absent band is infinite and priced zero: 0 · inf is never selected
+        above = (pull + 2 * s * data.soft_upper) / (penalty + 2 * q + 2 * s)
+        below = (pull + 2 * s * data.soft_lower) / (penalty + 2 * q + 2 * s)
+    z = np.where(free > data.soft_upper, above, np.where(free < data.soft_lower, below, free))
+    return np.asarray(np.clip(z, data.lower, data.upper))

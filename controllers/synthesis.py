@@ -1,0 +1,337 @@
+"""The synthesis: the frozen design object, and the solve of one period.
+
+Problem. Over the horizon, minimise the sum of all rows' costs (2) over plans that are sums of localized contributions,
+
+    minimise  sum_r f_r(z_r)   subject to   z = sum_i S_i' (H_i p_i + N_i v_i)
+
+Symbols, in weighted rows (value / span · sqrt(weight)):
+
+    z  (R,)   row copy: obeys every hard limit exactly, whatever the iteration count. This is what is applied.
+    y  (R,)   column copy: obeys the dynamics exactly
+    l  (R,)   summed scaled multipliers
+    n  (R,)   how many contributions touch each row
+    G         sum_i S_i' N_i N_i' S_i, a constant of the plant; S_i picks the rows contribution i touches
+    rho       penalty of the split; row r sees p_r = rho / n_r
+
+Iteration, started from y0 = sum_i S_i' H_i p_i:
+
+    z    = row rule (5) of y − l with weight p
+    beta = (relax (z − y) + l) / n            one number per row: all that a neighbour ever needs
+    y   <- y + G beta
+    l   <- n beta − G beta                                                                          (4)
+
+which is the alternating direction method of multipliers on the row copies and column copies of all contributions
+(split by rows and columns: arXiv:1909.10074; over-relaxation: Boyd et al., Found. Trends Mach. Learn. 3 (2011) 1-122,
+section 3.4.3), reduced to one scalar per row because all copies of a row stay equal up to that scalar. The matrix form
+stands in the tests, and (4) equals it to rounding.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from enum import Enum
+
+import numpy as np
+
+from controllers import kernels
+from controllers.arrays import Floats, Ints
+from controllers.exceptions import NotFiniteError
+from controllers.network import Network
+from controllers.responses import Response, localized_responses, require_localizable
+from controllers.rows import Of, Quantity, Region, RowData, RowTable
+
+
+class Outcome(Enum):
+    """How a solve ended. All but the last return a plan that obeys every hard limit."""
+
+    CONVERGED = "converged"
+    OUT_OF_TIME = "out of time"
+    OUT_OF_ITERATIONS = "out of iterations"
+    NOT_FINITE = "not finite"
+
+
+@dataclass(frozen=True)
+class Settings:
+    """Settings of the iteration; none of them moves the optimum.
+
+    Attributes:
+        rho: penalty of the split, cost per span squared.
+        relax: over-relaxation, in (0, 2).
+        chunk: passes between two looks at the clock and the residuals.
+        tolerance_spans: largest primal residual and last change of the plan, in spans, called converged.
+        max_iterations: most passes of one solve.
+        pull_passes: column steps that pull a shifted plan onto a new measurement.
+    """
+
+    rho: float = 0.3
+    relax: float = 1.6
+    chunk: int = 5
+    tolerance_spans: float = 1e-3
+    max_iterations: int = 400
+    pull_passes: int = 3
+
+
+@dataclass(frozen=True)
+class Measured:
+    """What one period starts from: states (n,), disturbances held over the horizon (r,), inputs written last (m,)."""
+
+    x: Floats
+    w: Floats
+    u_before: Floats
+
+
+@dataclass(frozen=True)
+class Iterate:
+    """State of the iteration between periods, weighted rows (R,) each."""
+
+    z: Floats
+    y: Floats
+    l: Floats  # noqa: E741 - the symbol of the package head
+
+
+@dataclass(frozen=True)
+class Plan:
+    """What a solve returns.
+
+    Attributes:
+        outcome: how it ended.
+        iterations: passes run.
+        rows: the row copy z, (R,) in spans.
+        inputs: first inputs, (m,) in the network's units; NaN where an input has no quantity.
+        region: for every input, at which limit its first value rests.
+        primal: largest |z − y| of every section, (N,) in spans.
+        change: largest change of y in the last pass of every section, (N,) in spans.
+    """
+
+    outcome: Outcome
+    iterations: int
+    rows: Floats
+    inputs: Floats
+    region: tuple[Region, ...]
+    primal: Floats
+    change: Floats
+
+    @property
+    def residual(self) -> Floats:
+        """Larger of the two residuals of every section, (N,) in spans."""
+        return np.maximum(self.primal, self.change)
+
+
+@dataclass(frozen=True)
+class _Flat:
+    """All responses side by side, as the kernels read them."""
+
+    touched: Ints
+    at: Ints
+    basis: Floats
+    basis_at: Ints
+    freedom: Ints
+
+    @classmethod
+    def of(cls, responses: Sequence[Response]) -> _Flat:
+        place: dict[int, int] = {}
+        parts: list[Floats] = []
+        length = 0
+        for response in responses:
+            if id(response.basis) not in place:
+                place[id(response.basis)] = length
+                parts.append(response.basis.reshape(-1))
+                length += response.basis.size
+        return cls(
+            touched=np.concatenate([response.rows for response in responses]),
+            at=np.concatenate([[0], np.cumsum([len(response.rows) for response in responses])]).astype(np.int64),
+            basis=np.concatenate(parts),
+            basis_at=np.array([place[id(response.basis)] for response in responses], dtype=np.int64),
+            freedom=np.array([response.basis.shape[1] for response in responses], dtype=np.int64),
+        )
+
+
+@dataclass(frozen=True)
+class Design:
+    """Everything that can be known before the first measurement; frozen, and safe to share between threads."""
+
+    table: RowTable
+    locality: int
+    settings: Settings
+    responses: tuple[Response, ...]
+    copies: Floats
+    flat: _Flat
+
+    @classmethod
+    def build(cls, network: Network, quantities: Sequence[Quantity], *, horizon: int, locality: int, settings: Settings | None = None) -> Design:
+        """Build the design of a plant.
+
+        Args:
+            network: the plant, (1).
+            quantities: what is priced or limited.
+            horizon: T, in periods.
+            locality: d, in couplings.
+            settings: of the iteration.
+
+        Raises:
+            RowError: a quantity does not fit the network.
+            NotLocalizableError: some section cannot be confined to its locality; the message has the least that works.
+        """
+        table = RowTable.build(network, quantities, horizon)
+        responses = localized_responses(table, locality)
+        require_localizable(table, responses)
+        flat = _Flat.of(responses)
+        copies = np.bincount(flat.touched, minlength=table.count).astype(float)
+        return cls(table, locality, settings or Settings(), responses, copies, flat)
+
+    def data(self) -> RowData:
+        """Return the usual prices, targets and limits, in spans."""
+        return self.table.data()
+
+    def free_response(self, measured: Measured) -> Floats:
+        """Return y0, the plan that answers the measurement with least norm, weighted rows (R,)."""
+        net = self.table.network
+        y = np.zeros(self.table.count)
+        for i, response in enumerate(self.responses):
+            p = np.concatenate(
+                [
+                    measured.x[net.x_at[i] : net.x_at[i + 1]],
+                    measured.w[net.w_at[i] : net.w_at[i + 1]],
+                    measured.u_before[net.u_at[i] : net.u_at[i + 1]],
+                ]
+            )
+            y[response.rows] += response.gain @ p
+        return y
+
+    def project(self, source: Floats) -> Floats:
+        """Return G applied to weighted rows, (R,)."""
+        out = np.empty_like(source)
+        flat = self.flat
+        kernels.project(source, out, flat.touched, flat.at, flat.basis, flat.basis_at, flat.freedom)
+        return out
+
+    def warm(self, y0: Floats, before: Iterate) -> Iterate:
+        """Shift the last plan by one period and pull it onto the new measurement."""
+        later = self.table.following
+        z, y = before.z[later], y0
+        for _ in range(self.settings.pull_passes):
+            y = y + self.project((z - y) / self.copies)
+        return Iterate(z, y, before.l[later])
+
+    def solve(
+        self,
+        measured: Measured,
+        data: RowData | None = None,
+        before: Iterate | None = None,
+        *,
+        may_continue: Callable[[int], bool] = lambda _: True,
+        max_iterations: int | None = None,
+    ) -> tuple[Plan, Iterate]:
+        """Plan one period; always returns the best plan it has, however early it is told to stop.
+
+        Args:
+            measured: state, disturbances and last inputs.
+            data: prices, targets and limits; the usual ones when left out.
+            before: where the last period's solve ended; cold start when left out.
+            may_continue: asked every `settings.chunk` passes with the passes run so far; False ends the solve.
+            max_iterations: overrides the setting.
+
+        Returns:
+            The plan, and the iterate to hand to the next period.
+
+        Raises:
+            NotFiniteError: a measurement or a row number is not finite.
+        """
+        data = self.data() if data is None else data
+        self._require_finite(measured, data)
+        y0 = self.free_response(measured)
+        start = Iterate(y0.copy(), y0, np.zeros_like(y0)) if before is None else self.warm(y0, before)
+        most = self.settings.max_iterations if max_iterations is None else max_iterations
+        return self._run(start, data, may_continue, most)
+
+    def _run(self, start: Iterate, data: RowData, may_continue: Callable[[int], bool], most: int) -> tuple[Plan, Iterate]:
+        settings, flat, scaled = self.settings, self.flat, self._weighted(data)
+        z, y, l = start.z.copy(), start.y.copy(), start.l.copy()  # noqa: E741
+        beta, change = np.empty_like(y), np.zeros_like(y)
+        done, outcome = 0, Outcome.OUT_OF_ITERATIONS
+        while done < most:
+            count = min(settings.chunk, most - done)
+            kernels.iterate(
+                count, settings.relax, z, y, l, beta, change, self.copies, settings.rho / self.copies,
+                scaled.price, scaled.target, scaled.soft_price, scaled.soft_lower, scaled.soft_upper, scaled.lower, scaled.upper,
+                flat.touched, flat.at, flat.basis, flat.basis_at, flat.freedom,
+            )  # fmt: skip
+            done += count
+            if self._worst(z - y) <= settings.tolerance_spans and self._worst(change) <= settings.tolerance_spans:
+                outcome = Outcome.CONVERGED
+                break
+            if not may_continue(done):
+                outcome = Outcome.OUT_OF_TIME
+                break
+        return self._plan(z, y, change, data, done, outcome), Iterate(z, y, l)
+
+    def _plan(self, z: Floats, y: Floats, change: Floats, data: RowData, iterations: int, outcome: Outcome) -> Plan:
+        table, root = self.table, np.sqrt(self.table.weight)
+        rows = np.clip(z / root, data.lower, data.upper)
+        finite = bool(np.isfinite(rows).all() and np.isfinite(y).all())
+        inputs, region = self._first_inputs(rows, data)
+        return Plan(
+            outcome=outcome if finite else Outcome.NOT_FINITE,
+            iterations=iterations,
+            rows=rows,
+            inputs=inputs if finite else np.full_like(inputs, np.nan),
+            region=region,
+            primal=self._by_section((z - y) / root, table),
+            change=self._by_section(change / root, table),
+        )
+
+    def _first_inputs(self, rows: Floats, data: RowData) -> tuple[Floats, tuple[Region, ...]]:
+        """First value of every input that is a quantity by itself, and which limit it rests on."""
+        net, table = self.table.network, self.table
+        inputs = np.full(net.b.shape[1], np.nan)
+        region = [Region.FREE] * len(inputs)
+        for quantity in table.quantities:
+            mixed = np.flatnonzero(quantity.mix)
+            if quantity.of is not Of.INPUT or len(mixed) != 1:
+                continue
+            row = table.rows_of(quantity.name).start
+            k = int(net.u_at[net.index(quantity.section)] + mixed[0])
+            inputs[k] = rows[row] * quantity.span / quantity.mix[mixed[0]]
+            if rows[row] <= data.lower[row]:
+                region[k] = Region.LOWER
+            elif rows[row] >= data.upper[row]:
+                region[k] = Region.UPPER
+        return inputs, tuple(region)
+
+    def _weighted(self, data: RowData) -> RowData:
+        """Scale row numbers from spans to weighted rows: f(z) is the same number in both."""
+        root, weight = np.sqrt(self.table.weight), self.table.weight
+        return RowData(
+            price=data.price / weight,
+            target=data.target * root,
+            soft_price=data.soft_price / weight,
+            soft_lower=data.soft_lower * root,
+            soft_upper=data.soft_upper * root,
+            lower=data.lower * root,
+            upper=data.upper * root,
+        )
+
+    def _worst(self, weighted: Floats) -> float:
+        return float(np.max(np.abs(weighted) / np.sqrt(self.table.weight)))
+
+    @staticmethod
+    def _by_section(spans: Floats, table: RowTable) -> Floats:
+        worst = np.zeros(table.network.size)
+        np.maximum.at(worst, table.section, np.abs(spans))
+        return worst
+
+    def _require_finite(self, measured: Measured, data: RowData) -> None:
+        net = self.table.network
+        for what, values, at in (("state", measured.x, net.x_at), ("disturbance", measured.w, net.w_at), ("last input", measured.u_before, net.u_at)):
+            if values.shape != (at[-1],):
+                raise NotFiniteError(f"{what}s have shape {values.shape}; the network wants ({at[-1]},)")
+            bad = np.flatnonzero(~np.isfinite(values))
+            if len(bad):
+                section = net.names[int(np.searchsorted(at, bad[0], side="right") - 1)]
+                raise NotFiniteError(f"{what} of section {section!r} is {values[bad[0]]}; hold the section or coast its estimate instead")
+        for what, numbers in (("price", data.price), ("target", data.target), ("soft price", data.soft_price)):
+            bad = np.flatnonzero(~np.isfinite(numbers))
+            if len(bad):
+                quantity = self.table.quantities[int(bad[0]) // self.table.horizon]
+                raise NotFiniteError(f"{what} of quantity {quantity.name!r} is {numbers[bad[0]]}; give a finite number")
