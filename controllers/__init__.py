@@ -1,0 +1,50 @@
+"""Localized predictive control by explicit synthesis: pure numerics, arrays in, arrays out.
+
+Problem. A plant of coupled sections (`network`) is to be driven to targets within limits (`rows`), every section using
+only what happens a few couplings away (`responses`), inside a sampling period (`synthesis`, loops in `kernels`).
+`linearise` makes the network from physics, `observer` the measurement, `central` the answer to compare with, and
+`spectrum` says whether the loop is stable. No clock, no I/O, no logging.
+
+    network -> rows -> responses -> synthesis -> central, spectrum -> observer
+"""
+
+from controllers.exceptions import (
+    ControllerError,
+    EquilibriumError,
+    NetworkError,
+    NotFiniteError,
+    NotLocalizableError,
+    ObserverError,
+    ReferenceSolveError,
+    RowError,
+)
+from controllers.network import Network
+from controllers.observer import Estimate, Noise, Observer
+from controllers.rows import Of, Quantity, Region, RowData, RowTable
+from controllers.synthesis import Design, Iterate, Measured, Outcome, Plan, Settings
+
+__all__ = [
+    "ControllerError",
+    "Design",
+    "EquilibriumError",
+    "Estimate",
+    "Iterate",
+    "Measured",
+    "Network",
+    "NetworkError",
+    "Noise",
+    "NotFiniteError",
+    "NotLocalizableError",
+    "Observer",
+    "ObserverError",
+    "Of",
+    "Outcome",
+    "Plan",
+    "Quantity",
+    "ReferenceSolveError",
+    "Region",
+    "RowData",
+    "RowError",
+    "RowTable",
+    "Settings",
+]

@@ -47,7 +47,13 @@ def assemble(table: RowTable, measured: Measured, data: RowData) -> QuadraticPro
     offset = qp @ measured.u_before
 
     priced = sparse.diags_array(data.price, format="csr")
-    slack = sparse.block_diag([sparse.csr_array((z_map.shape[1] - len(banded),) * 2), sparse.diags_array(data.soft_price[banded], format="csr")], format="csr")
+    slack = sparse.block_diag(
+        [
+            sparse.csr_array((z_map.shape[1] - len(banded),) * 2),
+            sparse.diags_array(data.soft_price[banded], format="csr"),
+        ],
+        format="csr",
+    )
     p = 2 * (z_map.T @ priced @ z_map + slack)
     g = 2 * z_map.T @ (data.price * (offset - data.target))
 
@@ -62,14 +68,22 @@ def assemble(table: RowTable, measured: Measured, data: RowData) -> QuadraticPro
     driven = np.tile(net.e @ measured.w, steps)
     driven[:n] += net.a @ measured.x
     hard = np.flatnonzero(np.isfinite(data.lower) | np.isfinite(data.upper))
-    slack_map = sparse.hstack([sparse.csr_array((len(banded), z_map.shape[1] - len(banded))), sparse.eye_array(len(banded))], format="csr")
+    slack_map = sparse.hstack(
+        [sparse.csr_array((len(banded), z_map.shape[1] - len(banded))), sparse.eye_array(len(banded))], format="csr"
+    )
     band_map, nothing = pick @ z_map, np.full(len(banded), np.inf)
     return QuadraticProgram(
         p=sparse.csc_array(p),
         g=np.asarray(g),
-        k=sparse.csc_array(sparse.vstack([dynamics, z_map[hard], band_map + slack_map, band_map - slack_map, slack_map])),
-        lower=np.concatenate([driven, (data.lower - offset)[hard], (data.soft_lower - offset)[banded], -nothing, np.zeros(len(banded))]),
-        upper=np.concatenate([driven, (data.upper - offset)[hard], nothing, (data.soft_upper - offset)[banded], nothing]),
+        k=sparse.csc_array(
+            sparse.vstack([dynamics, z_map[hard], band_map + slack_map, band_map - slack_map, slack_map])
+        ),
+        lower=np.concatenate(
+            [driven, (data.lower - offset)[hard], (data.soft_lower - offset)[banded], -nothing, np.zeros(len(banded))]
+        ),
+        upper=np.concatenate(
+            [driven, (data.upper - offset)[hard], nothing, (data.soft_upper - offset)[banded], nothing]
+        ),
         row_map=z_map,
         row_offset=offset,
     )
@@ -102,5 +116,7 @@ def solve_quadratic_program(qp: QuadraticProgram) -> Floats:
     upper_p = sparse.csc_matrix(sparse.triu(qp.p, format="csc"))
     solution = clarabel.DefaultSolver(upper_p, qp.g, sparse.csc_matrix(constraints), bounds, cones, settings).solve()
     if str(solution.status) not in ("Solved", "AlmostSolved"):
-        raise ReferenceSolveError(f"the whole-plant problem was not solved: {solution.status}; check that its hard limits can be met together")
+        raise ReferenceSolveError(
+            f"the whole-plant problem was not solved: {solution.status}; check that its hard limits can be met together"
+        )
     return np.asarray(solution.x)

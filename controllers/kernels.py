@@ -15,7 +15,9 @@ from controllers.arrays import Floats, Ints
 
 
 @njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nsz"})
-def project(source: Floats, out: Floats, touched: Ints, at: Ints, basis: Floats, basis_at: Ints, freedom: Ints) -> None:  # pragma: no cover
+def project(
+    source: Floats, out: Floats, touched: Ints, at: Ints, basis: Floats, basis_at: Ints, freedom: Ints
+) -> None:  # pragma: no cover
     """out = G source,  G = sum_i S_i' N_i N_i' S_i."""
     out[:] = 0.0
     coefficients = np.empty(freedom.max())

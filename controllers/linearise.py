@@ -42,7 +42,9 @@ class OperatingPoint:
     w: Floats
 
 
-def jacobian(function: Callable[[AnyArray], AnyArray], at: Floats, colours: Ints, pattern: sparse.csr_array) -> sparse.csr_array:
+def jacobian(
+    function: Callable[[AnyArray], AnyArray], at: Floats, colours: Ints, pattern: sparse.csr_array
+) -> sparse.csr_array:
     """Differentiate `function` at `at`, exact to rounding.
 
     Args:
@@ -126,7 +128,9 @@ def equilibrium(
         while length > 1e-4 and not _improves(residual, v - length * step, worst):
             length /= 2
         v = v - length * step
-    raise EquilibriumError(f"no operating point found near the targets: worst residual {worst:.3g} after {iterations} Newton steps; check targets and sizes")
+    raise EquilibriumError(
+        f"no operating point found near the targets: worst residual {worst:.3g} after {iterations} Newton steps; check targets and sizes"
+    )
 
 
 def _improves(residual: Callable[[AnyArray], AnyArray], v: Floats, worst: float) -> bool:
@@ -135,7 +139,9 @@ def _improves(residual: Callable[[AnyArray], AnyArray], v: Floats, worst: float)
     return bool(np.isfinite(r).all() and np.abs(r).max(initial=0.0) < worst)
 
 
-def discretise(a: sparse.csr_array, b: sparse.csr_array, e: sparse.csr_array, x_at: Ints, ts_s: float) -> tuple[sparse.csr_array, sparse.csr_array, sparse.csr_array]:
+def discretise(
+    a: sparse.csr_array, b: sparse.csr_array, e: sparse.csr_array, x_at: Ints, ts_s: float
+) -> tuple[sparse.csr_array, sparse.csr_array, sparse.csr_array]:
     """Discretise continuous A, B, E with couplings held over the step; the sparsity by section is kept.
 
     Returns:
@@ -144,7 +150,9 @@ def discretise(a: sparse.csr_array, b: sparse.csr_array, e: sparse.csr_array, x_
     blocks = [_exact_step(a[lo:hi, lo:hi].toarray(), ts_s) for lo, hi in zip(x_at[:-1], x_at[1:], strict=True)]
     own = sparse.block_diag([transition for transition, _ in blocks], format="csr")
     integral = sparse.block_diag([held for _, held in blocks], format="csr")
-    diagonal = sparse.block_diag([a[lo:hi, lo:hi].toarray() for lo, hi in zip(x_at[:-1], x_at[1:], strict=True)], format="csr")
+    diagonal = sparse.block_diag(
+        [a[lo:hi, lo:hi].toarray() for lo, hi in zip(x_at[:-1], x_at[1:], strict=True)], format="csr"
+    )
     return (
         sparse.csr_array(own + integral @ (a - diagonal)),
         sparse.csr_array(integral @ b),
@@ -161,7 +169,9 @@ def _exact_step(a: Floats, ts_s: float) -> tuple[Floats, Floats]:
     return big[:n, :n], big[:n, n:]
 
 
-def held_coupling_error(a: sparse.csr_array, discrete: sparse.csr_array, ts_s: float, spans: Floats, *, samples: int = 16, seed: int = 0) -> float:
+def held_coupling_error(
+    a: sparse.csr_array, discrete: sparse.csr_array, ts_s: float, spans: Floats, *, samples: int = 16, seed: int = 0
+) -> float:
     """One-step error of the held couplings against the exact exponential, as a fraction of span.
 
     Random states of the size of their spans are stepped both ways; the largest difference is returned.

@@ -86,7 +86,9 @@ class Network:
         u_at = _block_offsets("inputs", names, ones if inputs is None else inputs)
         y_at = _block_offsets("outputs", names, states if c is None else (ones if outputs is None else outputs))
         w_at = _block_offsets(
-            "disturbances", names, dict.fromkeys(names, 0) if e is None else (ones if disturbances is None else disturbances)
+            "disturbances",
+            names,
+            dict.fromkeys(names, 0) if e is None else (ones if disturbances is None else disturbances),
         )
         return cls(
             names=names,
@@ -184,17 +186,23 @@ def _block_offsets(what: str, names: tuple[str, ...], sizes: Mapping[str, int]) 
     counts = [sizes.get(name, 0) for name in names]
     for name, count in zip(names, counts, strict=True):
         if count < 0 or (what == "states" and count == 0):
-            raise NetworkError(f"{what} of section {name!r}: {count} is not allowed; give {'one' if what == 'states' else 'zero'} or more")
+            raise NetworkError(
+                f"{what} of section {name!r}: {count} is not allowed; give {'one' if what == 'states' else 'zero'} or more"
+            )
     return offsets(counts)
 
 
 def _checked(letter: str, matrix: Matrix, shape: tuple[int, int]) -> sparse.csr_array:
     out = sparse.csr_array(matrix, dtype=np.float64)
     if out.shape != shape:
-        raise NetworkError(f"{letter} is {out.shape[0]} x {out.shape[1]}, but the sections given make it {shape[0]} x {shape[1]}")
+        raise NetworkError(
+            f"{letter} is {out.shape[0]} x {out.shape[1]}, but the sections given make it {shape[0]} x {shape[1]}"
+        )
     if not np.isfinite(out.data).all():
         coo = out.tocoo()
         bad = int(np.flatnonzero(~np.isfinite(coo.data))[0])
-        raise NetworkError(f"{letter}[{coo.coords[0][bad]}, {coo.coords[1][bad]}] is {coo.data[bad]}; every entry must be finite")
+        raise NetworkError(
+            f"{letter}[{coo.coords[0][bad]}, {coo.coords[1][bad]}] is {coo.data[bad]}; every entry must be finite"
+        )
     out.eliminate_zeros()
     return out

@@ -109,7 +109,11 @@ def require_localizable(table: RowTable, responses: Sequence[Response], *, searc
     if len(stuck) > 5:
         lines.append(f"and {len(stuck) - 5} more")
     least = least_locality(table, d + 1, search_up_to)
-    fix = f"set the locality to {least}" if least is not None else "no locality helps: some section lacks an actuator within reach"
+    fix = (
+        f"set the locality to {least}"
+        if least is not None
+        else "no locality helps: some section lacks an actuator within reach"
+    )
     raise NotLocalizableError("; ".join(lines) + f". Fix: {fix}")
 
 
@@ -150,7 +154,12 @@ class _Problem:
         dynamics = np.hstack([np.kron(eye, np.eye(len(xs))) - np.kron(shift, a), -np.kron(eye, b)])
         boundary = np.hstack([np.kron(shift, a_out), np.kron(eye, b_out)])
         none = np.zeros((steps * (len(xs) + len(outside_x)), len(own_u)))
-        driven = np.vstack([np.hstack([np.kron(first, a[:, start]), np.kron(step, e)]), -np.hstack([np.kron(first, a_out[:, start]), np.kron(step, e_out)])])
+        driven = np.vstack(
+            [
+                np.hstack([np.kron(first, a[:, start]), np.kron(step, e)]),
+                -np.hstack([np.kron(first, a_out[:, start]), np.kron(step, e_out)]),
+            ]
+        )
         rows, q, qp = _local_rows(table, xs, us, own_u)
         return cls(
             outside=outside,

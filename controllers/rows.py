@@ -76,14 +76,22 @@ class Quantity:
     def __post_init__(self) -> None:
         prices = np.atleast_1d(np.asarray(self.price, dtype=float))
         problems = (
-            (not np.isfinite(self.mix).all() or not any(self.mix), f"mix is {self.mix}", "give finite coefficients, not all zero"),
+            (
+                not np.isfinite(self.mix).all() or not any(self.mix),
+                f"mix is {self.mix}",
+                "give finite coefficients, not all zero",
+            ),
             (not 0 < self.span < inf, f"span is {self.span}", "give a positive, finite span"),
             (not 0 < self.weight < inf, f"weight is {self.weight}", "give a positive, finite weight"),
             (not (np.isfinite(prices).all() and (prices >= 0).all()), f"price is {self.price}", "give zero or more"),
             (not np.isfinite(self.target), f"target is {self.target}", "give a finite target"),
             (not 0 <= self.soft_price < inf, f"soft_price is {self.soft_price}", "give zero or more"),
             (not self.soft[0] <= self.soft[1], f"soft band is {self.soft}", "give (lower, upper) with lower <= upper"),
-            (not self.hard[0] <= self.hard[1], f"hard limits are {self.hard}", "give (lower, upper) with lower <= upper"),
+            (
+                not self.hard[0] <= self.hard[1],
+                f"hard limits are {self.hard}",
+                "give (lower, upper) with lower <= upper",
+            ),
         )
         for wrong, read, fix in problems:
             if wrong:
@@ -264,7 +272,9 @@ def _check_sizes(network: Network, quantity: Quantity, horizon: int) -> None:
             f"{have} {quantity.of.value.replace('move', 'input')}s; give one each"
         )
     if np.ndim(quantity.price) == 1 and np.size(quantity.price) != horizon:
-        raise RowError(f"quantity {quantity.name!r}: {np.size(quantity.price)} prices for {horizon} steps; give one number or one per step")
+        raise RowError(
+            f"quantity {quantity.name!r}: {np.size(quantity.price)} prices for {horizon} steps; give one number or one per step"
+        )
 
 
 class Region(Enum):

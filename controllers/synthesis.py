@@ -159,7 +159,15 @@ class Design:
     flat: _Flat
 
     @classmethod
-    def build(cls, network: Network, quantities: Sequence[Quantity], *, horizon: int, locality: int, settings: Settings | None = None) -> Design:
+    def build(
+        cls,
+        network: Network,
+        quantities: Sequence[Quantity],
+        *,
+        horizon: int,
+        locality: int,
+        settings: Settings | None = None,
+    ) -> Design:
         """Build the design of a plant.
 
         Args:
@@ -245,7 +253,9 @@ class Design:
         most = self.settings.max_iterations if max_iterations is None else max_iterations
         return self._run(start, data, may_continue, most)
 
-    def _run(self, start: Iterate, data: RowData, may_continue: Callable[[int], bool], most: int) -> tuple[Plan, Iterate]:
+    def _run(
+        self, start: Iterate, data: RowData, may_continue: Callable[[int], bool], most: int
+    ) -> tuple[Plan, Iterate]:
         settings, flat, scaled = self.settings, self.flat, self._weighted(data)
         z, y, l = start.z.copy(), start.y.copy(), start.l.copy()  # noqa: E741
         beta, change = np.empty_like(y), np.zeros_like(y)
@@ -323,13 +333,19 @@ class Design:
 
     def _require_finite(self, measured: Measured, data: RowData) -> None:
         net = self.table.network
-        for what, values, at in (("state", measured.x, net.x_at), ("disturbance", measured.w, net.w_at), ("last input", measured.u_before, net.u_at)):
+        for what, values, at in (
+            ("state", measured.x, net.x_at),
+            ("disturbance", measured.w, net.w_at),
+            ("last input", measured.u_before, net.u_at),
+        ):
             if values.shape != (at[-1],):
                 raise NotFiniteError(f"{what}s have shape {values.shape}; the network wants ({at[-1]},)")
             bad = np.flatnonzero(~np.isfinite(values))
             if len(bad):
                 section = net.names[int(np.searchsorted(at, bad[0], side="right") - 1)]
-                raise NotFiniteError(f"{what} of section {section!r} is {values[bad[0]]}; hold the section or coast its estimate instead")
+                raise NotFiniteError(
+                    f"{what} of section {section!r} is {values[bad[0]]}; hold the section or coast its estimate instead"
+                )
         for what, numbers in (("price", data.price), ("target", data.target), ("soft price", data.soft_price)):
             bad = np.flatnonzero(~np.isfinite(numbers))
             if len(bad):
