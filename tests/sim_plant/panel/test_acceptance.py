@@ -85,6 +85,14 @@ def test_expiry_is_used_up_by_its_set(panel: Panel) -> None:
     assert outcomes == (Outcome.TAKEN, Outcome.TAKEN, Outcome.NO_EXPIRY)
 
 
+def test_inputs_of_a_refused_set_are_not_committed_by_the_next(panel: Panel) -> None:
+    """A refusal ends its set for good, also inside one request."""
+    late, good = ("panel.expires", panel.now_ms - 1), ("panel.expires", panel.now_ms)
+    panel.send(("tank-1.pump", 55.0), late, ("panel.period", 7), good, ("panel.period", 8))
+    assert panel.shows("panel.accepted") == 8
+    assert panel.shows("tank-1.pump") == 40.0
+
+
 def test_inputs_after_the_period_belong_to_no_set(panel: Panel) -> None:
     """Order is the order of the list."""
     expires = ("panel.expires", panel.now_ms + 100)

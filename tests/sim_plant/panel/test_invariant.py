@@ -1,7 +1,8 @@
 """The one law of the panel, against an adversary that sends anything in any order.
 
-No input reaches an actuator unless its set was in charge, in window and newer. The oracle below says so in its own words: it looks at
-the request and at what the panel showed before it, and asks whether the change of an actuator can be justified.
+No input reaches an actuator unless its set was in charge, in window and newer. The oracle below says so in its own
+words: it looks at the request and at what the panel showed before it, and asks whether the change of an actuator can
+be justified.
 """
 
 from __future__ import annotations
@@ -23,23 +24,26 @@ ENTRIES = st.one_of(
     st.tuples(st.just("panel.heartbeat"), st.integers(0, 3)),
     st.tuples(st.sampled_from(["tank-1.in_charge", "tank-2.in_charge"]), st.booleans()),
 )
-WELL_FORMED = st.builds(
-    lambda value, valid_ms, period: [
-        ("tank-1.pump", value),
-        ("tank-2.pump", 100.0 - value),
-        ("panel.expires in", valid_ms),
-        ("panel.period", period),
-    ],
-    st.floats(0.0, 100.0),
+COMMITS = st.builds(
+    lambda valid_ms, period: [("panel.expires in", valid_ms), ("panel.period", period)],
     st.integers(-100, 500),
     st.integers(0, 12),
+)
+SETS = st.builds(
+    lambda one, other, commit: [("tank-1.pump", one), ("tank-2.pump", other), *commit],
+    st.floats(0.0, 100.0),
+    INPUTS,
+    COMMITS,
+)
+REQUESTS = st.one_of(
+    st.lists(ENTRIES, max_size=8), SETS, st.builds(list.__add__, SETS, SETS), st.builds(list.__add__, SETS, COMMITS)
 )
 Request = list[tuple[str, object]]
 
 
 def can_be_justified(before: PanelState, request: Request, tag: str, command: float) -> bool:
     """Whether some set in the request may have put this actuator to this command."""
-    section = tag.split(".")[0]
+    section = tag.partition(".")[0]
     start = 0
     for end, (name, period) in enumerate(request):
         if name != "panel.period":
@@ -83,6 +87,12 @@ class Adversary(RuleBasedStateMachine):
         self.panel = Panel()
         self.panel.wait(10_000)
 
+    def dated(self, name: str, value: object) -> tuple[str, object]:
+        """Turn a validity from now on into an instant of the panel's clock."""
+        if name == "panel.expires in" and isinstance(value, int):
+            return "panel.expires", self.panel.now_ms + value
+        return name, value
+
     @rule(ms=st.integers(0, 1500))
     def wait(self, ms: int) -> None:
         """Time passes, and only time."""
@@ -105,17 +115,10 @@ class Adversary(RuleBasedStateMachine):
         beat = ("panel.heartbeat", self.panel.state.heartbeat + 1)
         self.panel.send(beat, ("tank-1.in_charge", True), ("tank-2.in_charge", True))
 
-    @rule(
-        entries=st.one_of(st.lists(ENTRIES, max_size=8), WELL_FORMED, st.builds(list.__add__, WELL_FORMED, WELL_FORMED))
-    )
+    @rule(entries=REQUESTS)
     def request(self, entries: list[tuple[str, object]]) -> None:
         """Whatever arrives, every change of an actuator has its set."""
-        request = [
-            ("panel.expires", self.panel.now_ms + value)
-            if name == "panel.expires in" and isinstance(value, int)
-            else (name, value)
-            for name, value in entries
-        ]
+        request = [self.dated(name, value) for name, value in entries]
         before, _ = tick(SETTINGS, self.panel.state, self.panel.now_ms)
         outcomes = self.panel.send(*request)
         after = self.panel.state
