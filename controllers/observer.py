@@ -157,3 +157,26 @@ def _error_dynamics(net: Network, gain_x: sparse.csr_array, gain_w: sparse.csr_a
     gain = sparse.vstack([gain_x, gain_w], format="csr")
     seen = net.c @ f[: net.a.shape[0]]
     return sparse.csr_array(f - gain @ seen)
+
+
+def seed(network: Network, y: Floats, u: Floats) -> Floats:
+    """States that explain outputs y (p,) and inputs u (m,) at rest, deviations, (n,).
+
+    States that an output shows take its value (least squares); the others are where those and the inputs hold them.
+    """
+    x = np.zeros(network.a.shape[0])
+    for i in range(network.size):
+        own = slice(int(network.x_at[i]), int(network.x_at[i + 1]))
+        c = network.c[int(network.y_at[i]) : int(network.y_at[i + 1]), own].toarray()
+        shown = np.abs(c).max(axis=0, initial=0.0) > 0
+        x_own = np.zeros(c.shape[1])
+        if shown.any():
+            x_own[shown] = np.linalg.lstsq(c[:, shown], y[int(network.y_at[i]) : int(network.y_at[i + 1])])[0]
+        hidden = np.flatnonzero(~shown)
+        if len(hidden):
+            a = network.a[own, own].toarray()
+            b = network.b[own, int(network.u_at[i]) : int(network.u_at[i + 1])].toarray()
+            push = a[np.ix_(hidden, shown)] @ x_own[shown] + b[hidden] @ u[int(network.u_at[i]) : int(network.u_at[i + 1])]
+            x_own[hidden] = np.linalg.lstsq(np.eye(len(hidden)) - a[np.ix_(hidden, hidden)], push)[0]
+        x[own] = x_own
+    return x

@@ -31,6 +31,7 @@ class DataType(StrEnum):
     FLOAT = "float"
     BOOLEAN = "boolean"
     COUNTER = "counter"
+    TEXT = "text"
 
 
 @dataclass(frozen=True)

@@ -33,6 +33,7 @@ TYPES = {
     DataType.FLOAT: (*FLOATS, *INTEGERS),
     DataType.COUNTER: tuple(INTEGERS),
     DataType.BOOLEAN: (ua.VariantType.Boolean,),
+    DataType.TEXT: (ua.VariantType.String,),
 }
 """Types of node that can hold each type of tag."""
 
