@@ -13,34 +13,26 @@ from __future__ import annotations
 
 import asyncio
 import random
-import re
 from collections.abc import Coroutine, Mapping, Sequence
 from dataclasses import dataclass, field
 from math import isfinite
 from typing import Any, TypeVar
-
-from asyncua.ua.status_codes import StatusCodes
 
 from gateway.clock import Clock
 from gateway.links.backoff import Backoff
 from gateway.links.deadline import CallBrokenError, DeadlineMissedError, result_by
 from gateway.links.events import OnLinkEvent
 from gateway.links.keeper import Keeper
-from gateway.links.opcua_addresses import parse_all
+from gateway.links.opcua_addresses import checked_endpoint, parse_all
 from gateway.links.opcua_session import OpcUaSession, SessionLostError, SessionTimes, hush_library
 from gateway.links.opcua_survey import OpcUaSite
-from gateway.links.opcua_values import UnencodableError, reading
+from gateway.links.opcua_values import UnencodableError, outcome_of, reading
 from gateway.links.protocol import Gathered, LinkState, LinkStatistics, WriteOutcome
 from gateway.plantfile.plant import SiteSpec
 from gateway.signals import MISSING, Tag
-from gateway.status_codes import Severity, name, severity
+from gateway.status_codes import name
 
 T = TypeVar("T")
-
-_ENDPOINT = re.compile(r"opc\.tcp://[^/:]+:\d{1,5}(/.*)?|opc\.tcp://\[[0-9A-Fa-f:.]+\]:\d{1,5}(/.*)?")
-
-MAYBE_TAKEN = frozenset({StatusCodes.BadTimeout, StatusCodes.BadRequestTimeout, StatusCodes.BadCommunicationError})
-"""Bad codes by which a server says that it lost sight of a write on its way to the device."""
 
 
 @dataclass(frozen=True)
@@ -89,13 +81,8 @@ class OpcUaLink:
         on_event: OnLinkEvent = _ignore,
         rng: random.Random | None = None,
     ) -> None:
-        if not _ENDPOINT.fullmatch(endpoint):
-            raise ValueError(f"endpoint {endpoint!r} is malformed: want opc.tcp://host:port")
         self._tags = {tag.name: tag for tag in tags}
-        if len(self._tags) != len(tags):
-            twice = sorted({tag.name for tag in tags if sum(other.name == tag.name for other in tags) > 1})
-            raise ValueError(f"tags named twice: {', '.join(twice)}; every tag of a link needs a name of its own")
-        self._site = OpcUaSite(endpoint, tuple(tags), parse_all(tags, namespace))
+        self._site = OpcUaSite(checked_endpoint(endpoint), tuple(tags), parse_all(tags, namespace))
         self._clock = clock
         self._settings = settings or OpcUaSettings()
         self._keeper = Keeper(
@@ -253,14 +240,3 @@ class OpcUaLink:
             if not isfinite(value):
                 raise ValueError(f"{tag.name} = {value}: only finite values go to the wire")
             seen.add(tag.name)
-
-
-def outcome_of(code: int) -> WriteOutcome:
-    """What a status code of a Write says of its value: only a plainly good one was taken (OPC 10000-4, 5.11.4)."""
-    match severity(code):
-        case Severity.GOOD:
-            return WriteOutcome.WRITTEN
-        case Severity.UNCERTAIN:
-            return WriteOutcome.UNKNOWN
-        case Severity.BAD:
-            return WriteOutcome.UNKNOWN if code & 0xFFFF_0000 in MAYBE_TAKEN else WriteOutcome.REJECTED

@@ -15,6 +15,7 @@ import binascii
 import re
 import uuid
 from base64 import b64decode
+from collections import Counter
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -26,6 +27,7 @@ from gateway.signals import Tag
 STANDARD_NAMESPACE = "http://opcfoundation.org/UA/"
 LARGEST_NUMBER = 0xFFFF_FFFF
 
+_ENDPOINT = re.compile(r"opc\.tcp://([^/:]+|\[[0-9A-Fa-f:.]+\]):\d{1,5}(/.*)?")
 _LOOKS_FORMAL = re.compile(r"(ns|nsu|s|i|g|b)=", re.IGNORECASE)
 _FORMAL = re.compile(r"(?:ns=(?P<index>\d+);|nsu=(?P<uri>[^;]+);)?(?P<kind>[sigb])=(?P<identifier>.+)", re.DOTALL)
 
@@ -46,6 +48,17 @@ class Address:
         if self.namespace not in namespaces:
             return None
         return node_id(self.identifier, namespaces.index(self.namespace))
+
+
+def checked_endpoint(text: str) -> str:
+    """Return an endpoint as it is if it says where to dial.
+
+    Raises:
+        ValueError: it is not `opc.tcp://host:port[/path]`.
+    """
+    if not _ENDPOINT.fullmatch(text):
+        raise ValueError(f"endpoint {text!r} is malformed: want opc.tcp://host:port")
+    return text
 
 
 def node_id(identifier: Any, index: Any = 0) -> ua.NodeId:
@@ -79,9 +92,13 @@ def parse_all(tags: Iterable[Tag], site_namespace: str) -> tuple[Address, ...]:
     """Read the addresses of all tags of one site.
 
     Raises:
-        ValueError: some address is malformed, or two carry different indices, so that no one namespace can be meant;
-            the message names the tags.
+        ValueError: a name is used twice, some address is malformed, or two carry different indices, so that no one
+            namespace can be meant; the message names the tags.
     """
+    tags = tuple(tags)
+    twice = [name for name, count in Counter(tag.name for tag in tags).items() if count > 1]
+    if twice:
+        raise ValueError(f"tags named twice: {', '.join(twice)}; every tag of a link needs a name of its own")
     addresses: list[Address] = []
     first_seen: tuple[str, int] | None = None
     for tag in tags:

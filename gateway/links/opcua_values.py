@@ -2,7 +2,8 @@
 
 In: whatever a server sends becomes a `Reading` of plain Python values (float, int, bool, str, bytes, None, lists of
 them); nothing a server sends raises. Out: a number is encoded as exactly the type of its node, because servers refuse
-any other, and as a value only, because many refuse a write that carries a status or timestamps.
+any other, and as a value only, because many refuse a write that carries a status or timestamps. Back: what the status
+of a write says of its value.
 
 Instants are Unix nanoseconds; the wire counts 100 ns steps since 1601 (OPC 10000-6, 5.2.2.5), asyncua keeps
 microseconds of them.
@@ -19,8 +20,11 @@ from typing import Any
 
 import numpy as np
 from asyncua import ua
+from asyncua.ua.status_codes import StatusCodes
 
+from gateway.links.protocol import WriteOutcome
 from gateway.signals import Reading
+from gateway.status_codes import NAMED, Severity, severity
 
 _PLAIN = (bool, int, float, str, bytes, type(None))
 _UNIX_EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
@@ -50,6 +54,10 @@ INTEGERS: dict[ua.VariantType, tuple[int, int]] = {
 """Integer types and their ranges (OPC 10000-6, table 1)."""
 
 FLOATS = (ua.VariantType.Float, ua.VariantType.Double)
+
+
+MAYBE_TAKEN = frozenset({StatusCodes.BadTimeout, StatusCodes.BadRequestTimeout, StatusCodes.BadCommunicationError})
+"""Bad codes by which a server says that it lost sight of a write on its way to the device."""
 
 
 class UnencodableError(Exception):
@@ -137,3 +145,14 @@ def _fits_single(value: float) -> bool:
         return math.isfinite(struct.unpack("<f", struct.pack("<f", value))[0])
     except OverflowError:
         return False
+
+
+def outcome_of(code: int) -> WriteOutcome:
+    """What a status code of a Write says of its value: only a plainly good one was taken (OPC 10000-4, 5.11.4)."""
+    match severity(code):
+        case Severity.GOOD:
+            return WriteOutcome.WRITTEN
+        case Severity.UNCERTAIN:
+            return WriteOutcome.UNKNOWN
+        case Severity.BAD:
+            return WriteOutcome.UNKNOWN if code & NAMED in MAYBE_TAKEN else WriteOutcome.REJECTED
