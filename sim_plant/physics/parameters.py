@@ -1,12 +1,23 @@
-"""How a physics describes its parameters, so that a plant file can be checked without knowing the physics."""
+"""How a physics describes its parameters, so that a plant file can be checked without knowing the physics.
+
+A kind of section or coupling is a frozen dataclass whose every field is a number made by `parameter`. Nothing else may
+be a field: many sections of one kind are stacked into one by making an array of each field (`sim_plant.stacking`).
+"""
 
 from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import MISSING, dataclass, field, fields
+from math import inf
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
+
+Array = npt.NDArray[Any]
+"""float64, or complex128 while a derivative is taken by complex steps."""
+
+Floats = npt.NDArray[np.float64]
 
 
 @dataclass(frozen=True)
@@ -39,12 +50,26 @@ def parameters_of(kind: type) -> tuple[Parameter, ...]:
 
 
 def require_positive(physics: object, names: Iterable[str]) -> None:
-    """Check that these parameters, numbers or stacked arrays, are positive and finite.
+    """Check that these parameters, numbers or stacked arrays, are above zero and finite.
 
     Raises:
         ValueError: names the parameter, its value and what is allowed.
     """
     for name in names:
-        value = np.asarray(getattr(physics, name))
-        if not (np.isfinite(value).all() and (value > 0).all()):
-            raise ValueError(f"{type(physics).__name__.lower()} {name} is {value}; give a positive, finite number")
+        _require(physics, name, lambda value: value > 0, "a positive, finite number")
+
+
+def require_between(physics: object, name: str, low: float, high: float = inf) -> None:
+    """Check that this parameter, a number or a stacked array, is finite and from `low` to `high`, both included.
+
+    Raises:
+        ValueError: names the parameter, its value and what is allowed.
+    """
+    wanted = f"a finite number from {low:g}" + ("" if high == inf else f" to {high:g}")
+    _require(physics, name, lambda value: (value >= low) & (value <= high), wanted)
+
+
+def _require(physics: object, name: str, allows: Any, wanted: str) -> None:
+    value = np.asarray(getattr(physics, name), dtype=np.float64)
+    if not (np.isfinite(value) & allows(value)).all():
+        raise ValueError(f"{type(physics).__name__.lower()} {name} is {value}; give {wanted}")
