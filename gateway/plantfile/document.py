@@ -37,6 +37,8 @@ def parse(text: str, source: str) -> tuple[Document, Ledger]:
         data = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
         raise PlantFileError(source, (_syntax_mistake(text, error),)) from error
+    except (ValueError, RecursionError) as error:  # numbers of thousands of digits, brackets thousands deep
+        raise PlantFileError(source, (Mistake("", None, "what no plant needs", f"TOML ({error})"),)) from error
     ledger = Ledger(Lines.of(text))
     document = _validated(data, ledger)
     for place, allowed in _missing(document, ()):

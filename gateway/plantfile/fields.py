@@ -56,10 +56,10 @@ def _number(allowed: str, test: Callable[[float], bool]) -> Callable[[Any], floa
     return check
 
 
-def _count(least: int) -> Callable[[Any], int]:
+def _count(least: int, most: int) -> Callable[[Any], int]:
     def check(value: Any) -> int:
-        if not isinstance(value, int) or isinstance(value, bool) or value < least:
-            refuse(f"a whole number, {least} or more")
+        if not isinstance(value, int) or isinstance(value, bool) or not least <= value <= most:
+            refuse(f"a whole number from {least} to {most}")
         return value
 
     return check
@@ -201,9 +201,10 @@ Relaxation: TypeAlias = Annotated[
 ]
 Share: TypeAlias = Annotated[float, PlainValidator(_share)]
 """A part of a whole: 0.002 or "0.2 %"."""
-CountFrom0: TypeAlias = Annotated[int, PlainValidator(_count(0))]
-CountFrom1: TypeAlias = Annotated[int, PlainValidator(_count(1))]
-CountFrom2: TypeAlias = Annotated[int, PlainValidator(_count(2))]
+Seed: TypeAlias = Annotated[int, PlainValidator(_count(0, 2**32 - 1))]
+Count: TypeAlias = Annotated[int, PlainValidator(_count(1, 1_000_000))]
+Horizon: TypeAlias = Annotated[int, PlainValidator(_count(2, 1000))]
+Locality: TypeAlias = Annotated[int, PlainValidator(_count(1, 1000))]
 Duration: TypeAlias = Annotated[
     float, PlainValidator(_time('a time above 0 with its unit, such as "500 ms"', lambda value: value > 0))
 ]

@@ -11,6 +11,7 @@ import re
 from collections.abc import Iterable
 from dataclasses import dataclass
 from difflib import get_close_matches
+from itertools import islice
 
 from gateway.plantfile.lines import Lines, Place
 
@@ -19,6 +20,8 @@ LONGEST_READ = 60
 
 LONGEST_LINE = 110
 """A mistake longer than this is printed on two lines."""
+
+_LONGEST_INTEGER_BITS = 128
 
 _BARE_KEY = re.compile(r"[A-Za-z0-9_-]+")
 
@@ -41,17 +44,19 @@ def shown(value: object) -> str:
 
 
 def _short(value: object) -> object:
-    """40.0 as 40, the way it was most likely written."""
+    """40.0 as 40, the way it was most likely written; and no integer so long that Python would refuse to print it."""
     if isinstance(value, list | tuple):
         return [_short(item) for item in value]
     if isinstance(value, dict):
         return {key: _short(item) for key, item in value.items()}
+    if isinstance(value, int) and value.bit_length() > _LONGEST_INTEGER_BITS:
+        return "a whole number beyond all use"
     return int(value) if isinstance(value, float) and value.is_integer() and abs(value) < 1e15 else value
 
 
 def nearest(word: str, right: Iterable[str]) -> str | None:
-    """Return the right spelling closest to the word, None when nothing comes close."""
-    by_lower = {name.lower(): name for name in right}
+    """Return the right spelling closest to the word, None when nothing comes close; looks at the first thousand."""
+    by_lower = {name.lower(): name for name in islice(right, 1000)}
     found = get_close_matches(word.lower(), by_lower, n=1)
     return by_lower[found[0]] if found else None
 

@@ -20,7 +20,7 @@ RESERVED = frozenset({"panel"})
 
 _PART = re.compile(r"\{([^{}]*)\}|([A-Za-z0-9_-]+)")
 _NAME = re.compile(r"[A-Za-z0-9_-]+")
-_RANGE = re.compile(r"(\d{1,9})\.\.(\d{1,9})")
+_RANGE = re.compile(r"([0-9]{1,9})\.\.([0-9]{1,9})")
 
 
 class NamePatternError(ValueError):
@@ -90,8 +90,8 @@ def row_order(names: Sequence[str]) -> list[int]:
 
 
 def _stem(name: str) -> str:
-    return re.sub(r"\d+", "#", name)
+    return re.sub(r"[0-9]+", "#", name)
 
 
 def _numbers_in(name: str) -> tuple[int, ...]:
-    return tuple(int(number) for number in re.findall(r"\d+", name))
+    return tuple(int(number) for number in re.findall(r"[0-9]+", name))

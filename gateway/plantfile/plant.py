@@ -118,7 +118,7 @@ class SectionSpec:
     signals: tuple[Signal, ...]
 
     def signals_of(self, role: Role) -> tuple[Signal, ...]:
-        """Signals with this role, in file order."""
+        """Signals with this role, in the order of the physics."""
         return tuple(signal for signal in self.signals if signal.role is role)
 
 
@@ -251,5 +251,5 @@ class Plant:
         raise KeyError(name)
 
     def signals(self, role: Role) -> tuple[Signal, ...]:
-        """All signals with this role, by section in file order."""
+        """All signals with this role, by section in plant order, within a section in the order of its physics."""
         return tuple(signal for section in self.sections for signal in section.signals_of(role))

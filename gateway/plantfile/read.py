@@ -62,7 +62,8 @@ def read_plant_text(text: str, source: str, catalogue: Catalogue | None = None) 
 
 def _text(path: Path) -> str:
     try:
-        return path.read_bytes().decode("utf-8")
+        # Some editors put a byte order mark in front of UTF-8; it means nothing.
+        return path.read_bytes().decode("utf-8-sig")
     except UnicodeDecodeError as error:
         line = error.object[: error.start].count(b"\n") + 1
         mistake = Mistake("", line, f"byte 0x{error.object[error.start]:02x}", "text in UTF-8")

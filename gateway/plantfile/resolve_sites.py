@@ -15,7 +15,7 @@ from gateway.plantfile.resolve_sections import written_tags
 from gateway.plantfile.tables import Document, SiteTable
 
 PANEL_SIGNALS = ("heartbeat", "permit", "clock", "expires", "period", "accepted", "refusal", "tripped")
-"""Signals of the panel itself."""
+"""Signals of the panel itself, those of `gateway.tags`."""
 
 SECTION_BITS = ("in_charge",)
 """What the panel keeps for every section, beside the section's own signals."""
@@ -28,7 +28,7 @@ def read_sites(document: Document, ledger: Ledger) -> dict[str, SiteSpec]:
     """Return all sites by name."""
     sites: dict[str, SiteSpec] = {}
     period_s = document.plant.period if document.plant else None
-    tags = _tags(document)
+    tags = _tags(document, has_panel=document.panel is not None or ledger.spoiled(("panel",)))
     for name, table in document.sites.items():
         place: Place = ("sites", name)
         _check_overrides(table, place, tags, ledger)
@@ -42,11 +42,14 @@ def read_sites(document: Document, ledger: Ledger) -> dict[str, SiteSpec]:
     return sites
 
 
-def _tags(document: Document) -> list[tuple[str, str]]:
+def _tags(document: Document, has_panel: bool) -> list[tuple[str, str]]:
     """Section and signal of everything that has an address; the panel's own come under "panel"."""
-    names = [name for sections in document.sections or [] for name in sections.names or ()]
-    bits = [(name, bit) for name in names for bit in SECTION_BITS]
-    return [*written_tags(document), *bits, *(("panel", signal) for signal in PANEL_SIGNALS)]
+    tags = written_tags(document)
+    if has_panel:
+        names = [name for sections in document.sections or [] for name in sections.names or ()]
+        tags += [(name, bit) for name in names for bit in SECTION_BITS]
+        tags += [("panel", signal) for signal in PANEL_SIGNALS]
+    return tags
 
 
 def _site(name: str, table: SiteTable, period_s: float | None) -> SiteSpec | None:

@@ -61,13 +61,13 @@ class ControllerTable(Table):
     """`[controller]`."""
 
     required = {"horizon": "periods to plan ahead, 2 or more", "locality": "couplings to look across, 1 or more"}
-    horizon: f.CountFrom2 | None = None
-    locality: f.CountFrom1 | None = None
+    horizon: f.Horizon | None = None
+    locality: f.Locality | None = None
     rho: f.Positive | None = None
     relax: f.Relaxation | None = None
     weights: WeightsTable | None = None
     tolerance: f.Share | None = None
-    max_iterations: f.CountFrom1 | None = None
+    max_iterations: f.Count | None = None
     wander: f.NotNegative | None = None
     cutoffs: CutoffsTable | None = None
 
@@ -168,10 +168,10 @@ class CouplingsTable(PhysicsTable):
 class HoldTable(Table):
     """`[hold]`, in periods."""
 
-    latch_after: f.CountFrom1 | None = None
-    latch_window: f.CountFrom1 | None = None
-    clear_for: f.CountFrom1 | None = None
-    blind_after: f.CountFrom1 | None = None
+    latch_after: f.Count | None = None
+    latch_window: f.Count | None = None
+    clear_for: f.Count | None = None
+    blind_after: f.Count | None = None
 
 
 class PanelTable(Table):
@@ -205,7 +205,7 @@ class SiteTable(Table):
 class BenchTable(Table):
     """`[bench]`, the simulated plant."""
 
-    seed: f.CountFrom0 | None = None
+    seed: f.Seed | None = None
     substep: f.Duration | None = None
 
 

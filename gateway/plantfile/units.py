@@ -17,10 +17,10 @@ import pint
 from gateway.plantfile.mistakes import nearest
 from gateway.plantfile.plant import Scale
 
-_QUANTITY = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d{1,3})?)\s*(.*?)\s*", re.DOTALL)
+_QUANTITY = re.compile(r"\s*([+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]{1,3})?)\s*(.*?)\s*", re.DOTALL)
 
 _NAME = r"[^\W\d_][^\W\d]*"
-_FACTOR = rf"(?:1|°?{_NAME}|%)(?:\^?-?\d)?"
+_FACTOR = rf"(?:1|°?{_NAME}|%)(?:\^?-?[0-9])?"
 _UNIT = re.compile(rf"/?\(?{_FACTOR}(?:\s*[*/· ]\s*\(?{_FACTOR}\)?)*", re.UNICODE)
 """Products and quotients of names with one-digit exponents; anything more might be arithmetic rather than a unit."""
 
@@ -65,7 +65,7 @@ def _unit(text: str) -> pint.Unit:
     if len(plain) > _LONGEST or not _UNIT.fullmatch(plain):
         raise UnitError('a unit such as "cm", "%", "cm^3/s" or "degC"', nearest(text, _COMMON.split()))
     plain = f"1{plain}" if plain.startswith("/") else plain
-    spelled = re.sub(r"(?<=[^\W\d_])(?=\d|-\d)", "^", plain).replace("·", "*")
+    spelled = re.sub(r"(?<=[^\W\d_])(?=[0-9]|-[0-9])", "^", plain).replace("·", "*")
     try:
         return _registry().parse_units(spelled)
     except Exception as error:  # pint lets the tokenizer's own errors through as well

@@ -32,6 +32,14 @@ def test_a_text_that_ends_too_early_is_found_at_its_end() -> None:
 
 
 @pytest.mark.parametrize(
+    "text", ["a = " + "[" * 5000 + "]" * 5000, "a = " + "1" * 5000, "\0", "a = 2020-13-01"], ids=lambda text: text[:8]
+)
+def test_a_text_that_breaks_the_decoder_is_one_mistake(text: str) -> None:
+    """Brackets thousands deep, numbers of thousands of digits, control characters, impossible dates."""
+    assert only_mistake(text).allowed.startswith("TOML (")
+
+
+@pytest.mark.parametrize(
     ("old", "new", "place", "suggestion"),
     [
         ("[panel]", "[pannel]", "pannel", "panel"),
@@ -111,6 +119,8 @@ WRONG_VALUES = [
     ('period = "500 ms"', 'period = "-1 s"', "plant.period"),
     ("horizon = 10", "horizon = 1", "controller.horizon"),
     ("horizon = 10", "horizon = 10.5", "controller.horizon"),
+    ("horizon = 10", "horizon = 100000", "controller.horizon"),
+    ("horizon = 10", f"horizon = 0x{'f' * 5000}", "controller.horizon"),
     ("horizon = 10", "horizon = true", "controller.horizon"),
     ("horizon = 10", 'horizon = "10"', "controller.horizon"),
     ("locality = 1", "locality = 0", "controller.locality"),

@@ -16,6 +16,13 @@ def test_a_file_is_its_text(tmp_path: Path) -> None:
     assert read_plant(path, CATALOGUE) == plant_of(GOOD)
 
 
+def test_a_byte_order_mark_means_nothing(tmp_path: Path) -> None:
+    """Some editors write one."""
+    path = tmp_path / "rig.toml"
+    path.write_bytes(b"\xef\xbb\xbf" + GOOD.encode())
+    assert read_plant(path, CATALOGUE) == plant_of(GOOD)
+
+
 def test_a_file_that_is_not_there_is_a_mistake(tmp_path: Path) -> None:
     """With the path that was tried."""
     with pytest.raises(PlantFileError, match=r"(?s)gone\.toml.*No such file"):

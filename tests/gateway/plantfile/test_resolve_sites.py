@@ -3,6 +3,8 @@
 import pytest
 
 from gateway.plantfile.plant import SiteKind, SiteSpec
+from gateway.plantfile.resolve_sites import PANEL_SIGNALS, SECTION_BITS
+from gateway.tags import IN_CHARGE, PANEL_READ, PANEL_WRITTEN
 from tests.gateway.plantfile.rig import GOOD, edited, only_mistake, plant_of
 
 LIVE = edited("[sites.bench]", "[sites.plant-a]")
@@ -79,6 +81,19 @@ def test_an_override_of_nothing_brings_the_nearest_tag(tag: str, suggestion: str
 def test_two_signals_at_one_address_are_refused(line: str, place: str) -> None:
     """What is written to one would move the other."""
     assert only_mistake(edited('link = "opcua"', f'link = "opcua"\n{line}')).place == place
+
+
+def test_without_a_panel_nothing_of_it_has_an_address() -> None:
+    """An override would be silently without effect."""
+    text = edited('[panel]\nwatchdog = "2 s"\nwindow = "500 ms"\n', "")
+    mistake = only_mistake(edited('link = "opcua"', 'link = "opcua"\noverrides = { "panel.permit" = "X" }', text))
+    assert mistake.place == 'sites.bench.overrides."panel.permit"'
+
+
+def test_the_panel_s_signals_are_those_the_link_carries() -> None:
+    """Two lists, one truth."""
+    assert set(PANEL_SIGNALS) == {*PANEL_READ, *PANEL_WRITTEN}
+    assert SECTION_BITS == (IN_CHARGE,)
 
 
 def test_a_deadline_is_a_part_of_the_period_unless_given() -> None:
