@@ -5,7 +5,7 @@ the same facts as data. The same notice becomes one log line (`gateway.logs`) an
 (`gateway.journal.Event.of`), so that both tell one story in one wording.
 
 A sentence stands alone: it names the section, the peer or the person, says what is so now, and, where somebody has to
-do something about it, what. Numbers carry their unit. Levels: `info` is the ordinary course of a night, `warning` is
+do something about it, what. Numbers carry their unit. The module is long because it is the one place. Levels: `info` is the ordinary course of a night, `warning` is
 what the gateway copes with, `error` is what waits for a person.
 """
 
@@ -412,12 +412,12 @@ def journal_unrecordable(error: str) -> Notice:
 
 
 def journal_recovered(failed_attempts: int, lost: int) -> Notice:
-    """The journal is written again."""
+    """The journal is written again, or has caught up."""
+    now = f"is written again, after {_count(failed_attempts, 'failed attempt')}" if failed_attempts else "has caught up"
     return Notice(
         Kind.JOURNAL,
         Level.WARNING if lost else Level.INFO,
-        f"The journal is written again, after {_count(failed_attempts, 'failed attempt')}; "
-        f"{_count(lost, 'record')} lost.",
+        f"The journal {now}; {_count(lost, 'record')} lost.",
         detail={"state": "recovered", "failed_attempts": failed_attempts, "lost": lost},
     )
 

@@ -43,7 +43,7 @@ _DAMAGE = (apsw.CorruptError, apsw.NotADBError)
 
 @dataclass(frozen=True)
 class Schema:
-    """What marks one sort of file as ours: SQLite's application id and user version, and the SQL of its tables."""
+    """One sort of file: SQLite's application id (31 bits, not 0) and user version mark it as ours; its tables."""
 
     noun: str
     application_id: int
@@ -86,10 +86,7 @@ def open_to_write(path: Path, schema: Schema, wall_ns: int, *, check: bool = Tru
                 connection.close()
                 raise
         except (*_DAMAGE, StorageDamagedError):
-            if _is_text(path):
-                raise StorageForeignError(
-                    f"{path} is a text file, not a {schema.noun}; it was left as it is. Give another path."
-                ) from None
+            _refuse_text(path, schema)
             aside = _move_aside(path, wall_ns)
             connection = _connect(path, apsw.SQLITE_OPEN_READWRITE | apsw.SQLITE_OPEN_CREATE)
         try:
@@ -166,8 +163,10 @@ def _open_existing(path: Path, schema: Schema, flags: int) -> apsw.Connection:
         connection = _connect(path, flags)
         try:
             _recognise(connection, path, schema, new_allowed=False)
-        except BaseException:
+        except BaseException as error:
             connection.close()
+            if isinstance(error, _DAMAGE):
+                _refuse_text(path, schema)
             raise
         return connection
 
@@ -217,18 +216,19 @@ def _move_aside(path: Path, wall_ns: int) -> Path:
     return aside
 
 
-def _is_text(path: Path) -> bool:
-    """Whether the file looks written by a person: SQLite pages, sound or torn, are full of zero bytes."""
+def _refuse_text(path: Path, schema: Schema) -> None:
+    """A damaged file of ours is full of zero bytes; one without any was more likely written by a person."""
     with path.open("rb") as file:
-        return b"\0" not in file.read(_SNIFFED_BYTES)
+        if b"\0" in file.read(_SNIFFED_BYTES):
+            return
+    raise StorageForeignError(f"{path} is a text file, not a {schema.noun}; it was left as it is. Give another path.")
 
 
 def _pragma(connection: apsw.Connection, name: str) -> int:
     value = connection.pragma(name)
     if not isinstance(value, int):
         raise StorageDamagedError(f"PRAGMA {name} answered {value!r}")
-    # SQLite gives the application id as a signed 32-bit number.
-    return value & 0xFFFFFFFF if name == "application_id" else value
+    return value
 
 
 @contextlib.contextmanager

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from math import nan
 
+import msgspec
+
 from gateway.hold import State
 from gateway.journal import (
     Event,
@@ -80,6 +82,11 @@ def period(k: int) -> PeriodRecord:
         ),
         panel=(SignalRow(True, 0, None, WALL_NS, Quality.GOOD),),
     )
+
+
+def large_period(k: int) -> PeriodRecord:
+    """A period too large for the room that is left on any page, so that it needs pages of its own."""
+    return msgspec.structs.replace(period(k), panel=(reading("x" * 9000),))
 
 
 def unrecordable_period(k: int) -> PeriodRecord:

@@ -99,7 +99,7 @@ def test_a_loss_is_handed_out_once() -> None:
 
 def test_a_capacity_that_cannot_work_is_refused() -> None:
     """The error names the value and the fix."""
-    with pytest.raises(ValueError, match="capacity = 1: .*at least 2"):
+    with pytest.raises(ValueError, match=r"capacity = 1: .*at least 2"):
         Backlog(1)
 
 
