@@ -50,7 +50,7 @@ def _syntax_mistake(text: str, error: tomllib.TOMLDecodeError) -> Mistake:
     """The decoder gives line and column in its message only (3.11 to 3.13)."""
     found = re.search(r"^(.*?) \(at (?:line (\d+), column \d+|end of document)\)$", str(error), re.DOTALL)
     reason = found[1] if found else str(error)
-    lines = text.splitlines() or [""]
+    lines = text.rstrip("\n").split("\n")
     line = int(found[2]) if found and found[2] else len(lines)
     return Mistake("", line, shown(lines[min(line, len(lines)) - 1].strip()), f"TOML ({reason})")
 
