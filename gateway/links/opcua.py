@@ -21,7 +21,7 @@ from typing import Any, TypeVar
 from gateway.clock import Clock
 from gateway.links.backoff import Backoff
 from gateway.links.deadline import CallBrokenError, DeadlineMissedError, result_by
-from gateway.links.events import OnLinkEvent
+from gateway.links.events import LinkEvent, OnLinkEvent
 from gateway.links.keeper import Keeper
 from gateway.links.opcua_addresses import checked_endpoint, parse_all
 from gateway.links.opcua_session import OpcUaSession, SessionLostError, SessionTimes, hush_library
@@ -91,8 +91,9 @@ class OpcUaLink:
             clock,
             backoff=self._settings.backoff,
             rng=rng or random.Random(),
-            on_event=on_event,
+            on_event=self._tell,
         )
+        self._on_event = on_event
         self._exchanges: set[asyncio.Future[Any]] = set()
         self._closed = False
         self._reads = self._read_failures = self._writes = self._write_failures = 0
@@ -134,7 +135,10 @@ class OpcUaLink:
         self._keeper.start(session)
 
     async def gather(self, due_ns: int) -> Gathered:
-        """Read every tag; by `due_ns` return what is there, `MISSING` for the rest."""
+        """Read every tag; by `due_ns` return what is there, `MISSING` for the rest.
+
+        One Read answers all tags or none. When cancelled, the Read goes on and its answer is thrown away.
+        """
         self._keeper.revive()
         self._reads += 1
         session = self._keeper.session
@@ -151,7 +155,8 @@ class OpcUaLink:
     async def write(self, values: Sequence[tuple[Tag, float | int | bool]], due_ns: int) -> Mapping[str, WriteOutcome]:
         """Write in this order in one request; by `due_ns` return an outcome for each tag name.
 
-        A set of which one value does not fit its node's type is not sent at all.
+        A set of which one value does not fit its node's type is not sent at all. When cancelled after sending, the
+        set may be taken all the same: read back before trusting anything.
 
         Raises:
             ValueError: a tag that is not this link's, is not writable or comes twice, or a value that is not finite.
@@ -181,8 +186,12 @@ class OpcUaLink:
             read_failures=self._read_failures,
             writes=self._writes,
             write_failures=self._write_failures,
-            last_error=self._last_error or self._keeper.last_error,
+            last_error=self._last_error,
         )
+
+    def _tell(self, event: LinkEvent) -> None:
+        self._last_error = event.reason or self._last_error
+        self._on_event(event)
 
     def _is_closed(self) -> bool:
         return self._closed

@@ -255,6 +255,11 @@ class Proxy:
         if self._pipes:
             await asyncio.wait(self._pipes)
 
+    @property
+    def busy(self) -> bool:
+        """Whether any connection is open."""
+        return bool(self._pipes)
+
     def fall_silent(self) -> None:
         """Swallow whatever comes from now on, on old connections and new ones, without closing any."""
         self._silent = True

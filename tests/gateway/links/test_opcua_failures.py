@@ -384,6 +384,53 @@ async def test_close_does_not_wait_for_a_dead_peer(
         assert (await events.next(LinkEventKind.CLOSED)).endpoint == proxy.endpoint
 
 
+async def test_a_cancelled_close_still_drops_the_line(bench: Bench, clock: VirtualClock, open_link: OpenLink) -> None:
+    """Cancelled during its farewell, close leaves neither socket nor session behind."""
+    async with Proxy(bench.port) as proxy:
+        link = await open_link(proxy.endpoint)
+        proxy.fall_silent()
+        closing = asyncio.ensure_future(link.close())
+        await soon(proxy.swallowed.wait())
+
+        closing.cancel()
+        with pytest.raises(asyncio.CancelledError):
+            await closing
+
+        await until(lambda: not proxy.busy)
+        await until(lambda: not bench.sessions)
+        assert link.statistics().state is LinkState.DOWN
+
+
+async def test_a_cancelled_write_may_be_taken_and_leaves_the_link_usable(
+    bench: Bench, clock: VirtualClock, open_link: OpenLink
+) -> None:
+    """Nobody can call a sent request back; the next gather shows what became of it."""
+    link = await open_link()
+    bench.hold()
+    writing = asyncio.ensure_future(link.write([(PUMP, 35.0)], ahead(clock, 0.1)))
+    await soon(bench.held.wait())
+
+    writing.cancel()
+    with pytest.raises(asyncio.CancelledError):
+        await writing
+
+    bench.gate.set()
+    assert (await soon(link.gather(ahead(clock, 0.1)))).readings[PUMP.name].value == 35.0
+
+
+async def test_the_last_error_is_the_latest(
+    bench: Bench, clock: VirtualClock, events: Events, open_link: OpenLink
+) -> None:
+    """A loss after a refused write is what the statistics show."""
+    link = await open_link()
+    await soon(link.write([(PUMP, 35.0)], clock.monotonic_ns()))
+    assert link.statistics().last_error == "write: the cut-off had passed, nothing was sent"
+    await bench.deafen()
+    await events.next(LinkEventKind.LOST)
+    assert link.statistics().last_error == "the peer closed the connection"
+    await bench.listen()
+
+
 async def test_closing_under_a_gather_ends_the_gather(bench: Bench, clock: VirtualClock, open_link: OpenLink) -> None:
     """Whoever waits for readings gets MISSING, not an exception."""
     link = await open_link()
