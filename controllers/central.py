@@ -96,7 +96,7 @@ def solve_central(table: RowTable, measured: Measured, data: RowData) -> Floats:
         ReferenceSolveError: the hard limits contradict each other or the solver gave up; carries its status.
     """
     qp = assemble(table, measured, data)
-    return qp.row_map @ solve_quadratic_program(qp) + qp.row_offset
+    return np.asarray(qp.row_map @ solve_quadratic_program(qp) + qp.row_offset)
 
 
 def solve_quadratic_program(qp: QuadraticProgram) -> Floats:

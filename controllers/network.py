@@ -186,9 +186,8 @@ def _block_offsets(what: str, names: tuple[str, ...], sizes: Mapping[str, int]) 
     counts = [sizes.get(name, 0) for name in names]
     for name, count in zip(names, counts, strict=True):
         if count < 0 or (what == "states" and count == 0):
-            raise NetworkError(
-                f"{what} of section {name!r}: {count} is not allowed; give {'one' if what == 'states' else 'zero'} or more"
-            )
+            least = "one" if what == "states" else "zero"
+            raise NetworkError(f"{what} of section {name!r}: {count} is not allowed; give {least} or more")
     return offsets(counts)
 
 

@@ -76,7 +76,8 @@ class Observer:
         radius = spectral_radius(_error_dynamics(network, gain_x, gain_w))
         if not radius < 1:
             raise ObserverError(
-                f"the assembled observer is unstable: spectral radius {radius:.6f}; strengthen the couplings' model or raise the assumed state noise"
+                f"the assembled observer is unstable: spectral radius {radius:.6f}; "
+                "strengthen the couplings' model or raise the assumed state noise"
             )
         return cls(network, gain_x, gain_w, radius)
 
@@ -135,7 +136,8 @@ class _Local:
         if p == 0:
             if r:
                 raise ObserverError(
-                    f"section {name!r} has {r} disturbance(s) to estimate but measures nothing; measure an output or drop them"
+                    f"section {name!r} has {r} disturbance(s) to estimate but measures nothing; "
+                    "measure an output or drop them"
                 )
             return np.zeros((n, 0))
         f = np.block([[self.a, self.e], [np.zeros((r, n)), np.eye(r)]])
@@ -145,7 +147,8 @@ class _Local:
             covariance = solve_discrete_are(f.T, h.T, q, np.diag(self.output**2))
         except (LinAlgError, ValueError) as error:
             raise ObserverError(
-                f"section {name!r} has no steady-state filter ({error}); its outputs do not show its states and disturbances"
+                f"section {name!r} has no steady-state filter ({error}); "
+                "its outputs do not show its states and disturbances"
             ) from error
         return np.asarray(covariance @ h.T @ np.linalg.inv(h @ covariance @ h.T + np.diag(self.output**2)))
 
@@ -166,17 +169,17 @@ def seed(network: Network, y: Floats, u: Floats) -> Floats:
     """
     x = np.zeros(network.a.shape[0])
     for i in range(network.size):
-        own = slice(int(network.x_at[i]), int(network.x_at[i + 1]))
-        c = network.c[int(network.y_at[i]) : int(network.y_at[i + 1]), own].toarray()
+        own, into, out = (slice(int(at[i]), int(at[i + 1])) for at in (network.x_at, network.u_at, network.y_at))
+        c = network.c[out, own].toarray()
         shown = np.abs(c).max(axis=0, initial=0.0) > 0
         x_own = np.zeros(c.shape[1])
         if shown.any():
-            x_own[shown] = np.linalg.lstsq(c[:, shown], y[int(network.y_at[i]) : int(network.y_at[i + 1])])[0]
+            x_own[shown] = np.linalg.lstsq(c[:, shown], y[out])[0]
         hidden = np.flatnonzero(~shown)
         if len(hidden):
             a = network.a[own, own].toarray()
-            b = network.b[own, int(network.u_at[i]) : int(network.u_at[i + 1])].toarray()
-            push = a[np.ix_(hidden, shown)] @ x_own[shown] + b[hidden] @ u[int(network.u_at[i]) : int(network.u_at[i + 1])]
+            b = network.b[own, into].toarray()
+            push = a[np.ix_(hidden, shown)] @ x_own[shown] + b[hidden] @ u[into]
             x_own[hidden] = np.linalg.lstsq(np.eye(len(hidden)) - a[np.ix_(hidden, hidden)], push)[0]
         x[own] = x_own
     return x

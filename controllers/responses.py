@@ -103,7 +103,8 @@ def require_localizable(table: RowTable, responses: Sequence[Response], *, searc
         return
     d = stuck[0].locality
     lines = [
-        f"section {report.section!r} cannot be confined to {d} couplings: {report.boundary or 'its own dynamics'} would feel it (residual {report.residual:.1e})"
+        f"section {report.section!r} cannot be confined to {d} couplings: "
+        f"{report.boundary or 'its own dynamics'} would feel it (residual {report.residual:.1e})"
         for report in stuck[:5]
     ]
     if len(stuck) > 5:

@@ -185,7 +185,7 @@ class RowTable:
 
     @cached_property
     def following(self) -> Ints:
-        """(R,) the row one step later of the same quantity; the last row follows itself. Shifts a plan by one period."""
+        """(R,) the row one step later of the same quantity, the last row following itself: shifts a plan one period."""
         steps = np.minimum(np.arange(self.horizon) + 1, self.horizon - 1)
         return (np.arange(len(self.quantities))[:, None] * self.horizon + steps).reshape(-1).astype(np.int64)
 
@@ -223,12 +223,12 @@ class RowTable:
             rows = self.rows_of(name)
             lower[rows], upper[rows] = np.asarray(low) / self.span[rows], np.asarray(high) / self.span[rows]
             if not (lower[rows] <= upper[rows]).all():
-                raise RowError(f"quantity {name!r}: hard limits {low} .. {high} are crossed; give lower <= upper")
+                raise RowError(f"quantity {name!r}: hard limits {low!r} .. {high!r} are crossed; give lower <= upper")
         return replace(data, lower=lower, upper=upper)
 
     @cached_property
     def maps(self) -> tuple[sparse.csr_array, sparse.csr_array, sparse.csr_array]:
-        """Qx (R, T n), Qu (R, T m) and Qp (R, m): z = Qx x_{1..T} + Qu u_{0..T-1} + Qp u_{-1}, in spans, time outermost."""
+        """Qx (R, T n), Qu (R, T m), Qp (R, m): z = Qx x_{1..T} + Qu u_{0..T-1} + Qp u_{-1}, spans, time outermost."""
         net, steps = self.network, self.horizon
         n, m = net.a.shape[0], net.b.shape[1]
         x_blocks, u_blocks, p_blocks = [], [], []
@@ -268,12 +268,13 @@ def _check_sizes(network: Network, quantity: Quantity, horizon: int) -> None:
     have = int(at[i + 1] - at[i])
     if len(quantity.mix) != have:
         raise RowError(
-            f"quantity {quantity.name!r}: mix has {len(quantity.mix)} coefficients, but section {quantity.section!r} has "
-            f"{have} {quantity.of.value.replace('move', 'input')}s; give one each"
+            f"quantity {quantity.name!r}: mix has {len(quantity.mix)} coefficients, but section "
+            f"{quantity.section!r} has {have} {quantity.of.value.replace('move', 'input')}s; give one each"
         )
     if np.ndim(quantity.price) == 1 and np.size(quantity.price) != horizon:
         raise RowError(
-            f"quantity {quantity.name!r}: {np.size(quantity.price)} prices for {horizon} steps; give one number or one per step"
+            f"quantity {quantity.name!r}: {np.size(quantity.price)} prices for {horizon} steps; "
+            "give one number or one per step"
         )
 
 
