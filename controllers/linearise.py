@@ -16,17 +16,19 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from itertools import pairwise
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 from scipy import sparse
 from scipy.linalg import expm
-from scipy.sparse.linalg import expm_multiply, lsqr, spsolve
+from scipy.sparse.linalg import expm_multiply, lsqr, splu
 
 from controllers.arrays import Floats, Ints
 from controllers.exceptions import EquilibriumError
 
-AnyArray = npt.NDArray[np.generic]
+AnyArray = npt.NDArray[Any]
 Physics = Callable[[AnyArray, AnyArray, AnyArray], AnyArray]
 """f(x, u, w) -> dx/dt on flat vectors, usable with complex x, u, w."""
 
@@ -67,8 +69,12 @@ def jacobian(
 
 
 def colour_columns(pattern: sparse.csr_array) -> Ints:
-    """Greedy colouring: columns that share a row get different colours (Curtis, Powell, Reid, J. IMA 13 (1974) 117-119)."""
-    conflicts = sparse.csr_array(pattern.T @ pattern)
+    """Greedy colouring: columns that share a row get different colours.
+
+    Curtis, Powell and Reid, J. Inst. Maths Applics 13 (1974) 117-119.
+    """
+    ones = sparse.csr_array((np.ones(pattern.nnz), pattern.indices, pattern.indptr), shape=pattern.shape)
+    conflicts = sparse.csr_array(ones.T @ ones)  # of the places, not the values: those may cancel
     colours = np.full(pattern.shape[1], -1, dtype=np.int64)
     for column in range(pattern.shape[1]):
         taken = {colours[j] for j in conflicts.indices[conflicts.indptr[column] : conflicts.indptr[column + 1]]}
@@ -113,7 +119,6 @@ def equilibrium(
     if pattern is None:
         pattern = sparse.csr_array(np.ones((n + len(aimed), len(v))))
     colours = colour_columns(pattern)
-    worst = np.inf
     for _ in range(iterations):
         r = np.real(residual(v))
         if not np.isfinite(r).all():
@@ -122,15 +127,30 @@ def equilibrium(
         if worst < tolerance:
             return OperatingPoint(x=v[:n], u=v[n:], w=guess.w)
         slope = jacobian(residual, v, colours, pattern).tocsc()
-        square = slope.shape[0] == slope.shape[1]
-        step = spsolve(slope, r) if square else lsqr(slope, r, atol=1e-14, btol=1e-14)[0]
+        step = _newton_step(slope, r)
+        if step is None:
+            break
         length = 1.0
         while length > 1e-4 and not _improves(residual, v - length * step, worst):
             length /= 2
         v = v - length * step
+    r = np.real(residual(v))
+    k = int(np.where(np.isfinite(r), np.abs(r), np.inf).argmax())
+    equation = f"dx/dt[{k}] / scale" if k < n else f"output[{aimed[k - n]}] - target"
     raise EquilibriumError(
-        f"no operating point found near the targets: worst residual {worst:.3g} after {iterations} Newton steps; check targets and sizes"
+        f"no operating point found near the targets: {equation} is still {r[k]:.3g}; "
+        "check the targets, the sizes and the guess"
     )
+
+
+def _newton_step(slope: sparse.csc_array, r: Floats) -> Floats | None:
+    """Solve `slope` step = r, by least norm when there are more unknowns; None where it is singular."""
+    if slope.shape[0] != slope.shape[1]:
+        return np.asarray(lsqr(slope, r, atol=1e-14, btol=1e-14)[0])
+    try:
+        return np.asarray(splu(slope).solve(r))
+    except RuntimeError:  # how SuperLU reports an exactly singular matrix
+        return None
 
 
 def _improves(residual: Callable[[AnyArray], AnyArray], v: Floats, worst: float) -> bool:
@@ -147,12 +167,10 @@ def discretise(
     Returns:
         A, B, E of (1) for a period of `ts_s` seconds.
     """
-    blocks = [_exact_step(a[lo:hi, lo:hi].toarray(), ts_s) for lo, hi in zip(x_at[:-1], x_at[1:], strict=True)]
+    blocks = [_exact_step(a[lo:hi, lo:hi].toarray(), ts_s) for lo, hi in pairwise(x_at)]
     own = sparse.block_diag([transition for transition, _ in blocks], format="csr")
     integral = sparse.block_diag([held for _, held in blocks], format="csr")
-    diagonal = sparse.block_diag(
-        [a[lo:hi, lo:hi].toarray() for lo, hi in zip(x_at[:-1], x_at[1:], strict=True)], format="csr"
-    )
+    diagonal = sparse.block_diag([a[lo:hi, lo:hi].toarray() for lo, hi in pairwise(x_at)], format="csr")
     return (
         sparse.csr_array(own + integral @ (a - diagonal)),
         sparse.csr_array(integral @ b),
