@@ -44,11 +44,12 @@ def project(
 @njit(nogil=True, cache=True)
 def iterate(  # pragma: no cover
     count: int,
+    first_relax: float,
     relax: float,
     z: Floats,
     y: Floats,
     l: Floats,  # noqa: E741 - the symbol of the package head
-    beta: Floats,
+    alpha: Floats,
     g: Floats,
     copies: Floats,
     penalty: Floats,
@@ -65,8 +66,12 @@ def iterate(  # pragma: no cover
     basis_at: Ints,
     freedom: Ints,
 ) -> None:
-    """Run `count` passes of (4) in place: row step by rule (5), column step by G, multipliers."""
-    for _ in range(count):
+    """Run `count` passes of (4) in place: row step by rule (5), column step by G, multipliers.
+
+    `first_relax` is the relaxation of the first of them, `relax` of the others.
+    """
+    for k in range(count):
+        along = relax if k > 0 else first_relax
         for r in range(len(z)):
             a = y[r] - l[r]
             p, q = penalty[r], price[r]
@@ -80,8 +85,8 @@ def iterate(  # pragma: no cover
                 v = (pull + 2.0 * s * soft_lower[r]) / (p + 2.0 * q + 2.0 * s)
             v = min(max(v, lower[r]), upper[r])
             z[r] = v
-            beta[r] = (relax * (v - y[r]) + l[r]) / copies[r]
-        project(beta, g, touched, at, basis, basis_at, freedom)
+            alpha[r] = along * (v - a) / copies[r]
+        project(alpha, g, touched, at, basis, basis_at, freedom)
         for r in range(len(z)):
             y[r] += g[r]
-            l[r] = copies[r] * beta[r] - g[r]
+            l[r] = (1.0 - along) * l[r] + copies[r] * alpha[r] - g[r]

@@ -15,15 +15,20 @@ Symbols, in weighted rows (value / span · sqrt(weight)):
 
 Iteration, started from y0 = sum_i S_i' H_i p_i:
 
-    z    = row rule (5) of y − l with weight p
-    beta = (relax (z − y) + l) / n            one number per row: all that a neighbour ever needs
-    y   <- y + G beta
-    l   <- n beta − G beta                                                                          (4)
+    a     = y − l
+    z     = row rule (5) of a with weight p
+    alpha = relax (z − a) / n                 one number per row: all that a neighbour ever needs
+    g     = G alpha
+    y    <- y + g
+    l    <- (1 − relax) l + n alpha − g                                                             (4)
 
 which is the alternating direction method of multipliers on the row copies and column copies of all contributions
 (split by rows and columns: arXiv:1909.10074; over-relaxation: Boyd et al., Found. Trends Mach. Learn. 3 (2011) 1-122,
-section 3.4.3), reduced to one scalar per row because all copies of a row stay equal up to that scalar. The matrix form
-stands in the tests, and (4) equals it to rounding.
+section 3.4.3), reduced to one scalar per row because the row step moves all copies of a row by the same scalar. The
+multipliers of the copies enter (4) through their sum alone as long as N_i' times those of contribution i is zero. Every
+column step makes it so; shifting a plan by one period undoes it, therefore the first pass of a solve runs with relax
+= 1, where it does not matter. The matrix form, with copies of its own for every contribution, stands in the tests, and
+(4) equals it to rounding.
 """
 
 from __future__ import annotations
@@ -88,6 +93,11 @@ class Iterate:
     z: Floats
     y: Floats
     l: Floats  # noqa: E741 - the symbol of the package head
+
+    @property
+    def finite(self) -> bool:
+        """Whether every number is finite; what is not must never reach the next period."""
+        return all(bool(np.isfinite(part).all()) for part in (self.z, self.y, self.l))
 
 
 @dataclass(frozen=True)
@@ -236,7 +246,7 @@ class Design:
         Args:
             measured: state, disturbances and last inputs.
             data: prices, targets and limits; the usual ones when left out.
-            before: where the last period's solve ended; cold start when left out.
+            before: where the last period's solve ended; cold start when left out or when that one was not finite.
             may_continue: asked every `settings.chunk` passes with the passes run so far; False ends the solve.
             max_iterations: overrides the setting.
 
@@ -244,12 +254,14 @@ class Design:
             The plan, and the iterate to hand to the next period.
 
         Raises:
-            NotFiniteError: a measurement or a row number is not finite.
+            NotFiniteError: a measurement, price or target is not finite, or a limit is NaN.
         """
         data = self.data() if data is None else data
         self._require_finite(measured, data)
         y0 = self.free_response(measured)
-        start = Iterate(y0.copy(), y0, np.zeros_like(y0)) if before is None else self.warm(y0, before)
+        start = (
+            Iterate(y0.copy(), y0, np.zeros_like(y0)) if before is None or not before.finite else self.warm(y0, before)
+        )
         most = self.settings.max_iterations if max_iterations is None else max_iterations
         return self._run(start, data, may_continue, most)
 
@@ -258,13 +270,15 @@ class Design:
     ) -> tuple[Plan, Iterate]:
         settings, flat, scaled = self.settings, self.flat, self._weighted(data)
         z, y, l = start.z.copy(), start.y.copy(), start.l.copy()  # noqa: E741
-        beta, change = np.empty_like(y), np.zeros_like(y)
+        alpha, change = np.empty_like(y), np.zeros_like(y)
         done, outcome = 0, Outcome.OUT_OF_ITERATIONS
         while done < most:
             count = min(settings.chunk, most - done)
             kernels.iterate(
-                count, settings.relax, z, y, l, beta, change, self.copies, settings.rho / self.copies,
-                scaled.price, scaled.target, scaled.soft_price, scaled.soft_lower, scaled.soft_upper, scaled.lower, scaled.upper,
+                count, 1.0 if done == 0 else settings.relax, settings.relax,
+                z, y, l, alpha, change, self.copies, settings.rho / self.copies,
+                scaled.price, scaled.target, scaled.soft_price, scaled.soft_lower, scaled.soft_upper,
+                scaled.lower, scaled.upper,
                 flat.touched, flat.at, flat.basis, flat.basis_at, flat.freedom,
             )  # fmt: skip
             done += count
@@ -292,22 +306,29 @@ class Design:
         )
 
     def _first_inputs(self, rows: Floats, data: RowData) -> tuple[Floats, tuple[Region, ...]]:
-        """First value of every input that is a quantity by itself, and which limit it rests on."""
+        """First value of every input that is a quantity by itself, and which limit it rests on.
+
+        An input that several quantities show takes the first one's value, inside the limits of all.
+        """
         net, table = self.table.network, self.table
         inputs = np.full(net.b.shape[1], np.nan)
-        region = [Region.FREE] * len(inputs)
+        lower, upper = np.full_like(inputs, -np.inf), np.full_like(inputs, np.inf)
         for quantity in table.quantities:
             mixed = np.flatnonzero(quantity.mix)
             if quantity.of is not Of.INPUT or len(mixed) != 1:
                 continue
             row = table.rows_of(quantity.name).start
             k = int(net.u_at[net.index(quantity.section)] + mixed[0])
-            inputs[k] = rows[row] * quantity.span / quantity.mix[mixed[0]]
-            if rows[row] <= data.lower[row]:
-                region[k] = Region.LOWER
-            elif rows[row] >= data.upper[row]:
-                region[k] = Region.UPPER
-        return inputs, tuple(region)
+            unit = quantity.span / quantity.mix[mixed[0]]
+            low, high = sorted((data.lower[row] * unit, data.upper[row] * unit))
+            lower[k], upper[k] = max(lower[k], low), min(upper[k], high)
+            inputs[k] = rows[row] * unit if np.isnan(inputs[k]) else inputs[k]
+        inputs = np.clip(inputs, lower, upper)
+        at_lower, at_upper = inputs <= lower, inputs >= upper
+        return inputs, tuple(
+            Region.LOWER if low else Region.UPPER if high else Region.FREE
+            for low, high in zip(at_lower, at_upper, strict=True)
+        )
 
     def _weighted(self, data: RowData) -> RowData:
         """Scale row numbers from spans to weighted rows: f(z) is the same number in both."""
@@ -346,8 +367,16 @@ class Design:
                 raise NotFiniteError(
                     f"{what} of section {section!r} is {values[bad[0]]}; hold the section or coast its estimate instead"
                 )
-        for what, numbers in (("price", data.price), ("target", data.target), ("soft price", data.soft_price)):
-            bad = np.flatnonzero(~np.isfinite(numbers))
+        for what, numbers, wrong in (
+            ("price", data.price, ~np.isfinite(data.price)),
+            ("target", data.target, ~np.isfinite(data.target)),
+            ("soft price", data.soft_price, ~np.isfinite(data.soft_price)),
+            ("lower end of the soft band", data.soft_lower, np.isnan(data.soft_lower)),
+            ("upper end of the soft band", data.soft_upper, np.isnan(data.soft_upper)),
+            ("lower hard limit", data.lower, np.isnan(data.lower)),
+            ("upper hard limit", data.upper, np.isnan(data.upper)),
+        ):
+            bad = np.flatnonzero(wrong)
             if len(bad):
                 quantity = self.table.quantities[int(bad[0]) // self.table.horizon]
-                raise NotFiniteError(f"{what} of quantity {quantity.name!r} is {numbers[bad[0]]}; give a finite number")
+                raise NotFiniteError(f"{what} of quantity {quantity.name!r} is {numbers[bad[0]]}; give a number")
