@@ -36,6 +36,8 @@ from sim_plant.plant import Network as PhysicsNetwork
 class Scaling:
     """Turns engineering values into the network's scaled deviations and back; arrays follow the network's order."""
 
+    x_zero: Floats
+    x_unit: Floats
     y_zero: Floats
     y_width: Floats
     u_zero: Floats
@@ -121,7 +123,7 @@ def build_design(plant: Plant) -> PlantDesign:
 
     y_width = np.array([signal.width * signal.scale.factor for signal in order.outputs])
     u_width = np.array([signal.width * signal.scale.factor for signal in order.inputs])
-    x_unit = _state_units(c[order.output_rows], y_width, point.x)
+    x_unit = _state_units(c[list(order.output_rows)], y_width, point.x)
     w_unit = _disturbance_units(e_d, x_unit)
     network = _scaled_network(plant, physics, order, (a_d, b_d, e_d, c), (x_unit, u_width, w_unit, y_width))
 
@@ -154,7 +156,7 @@ def build_design(plant: Plant) -> PlantDesign:
         network=network,
         synthesis=synthesis,
         observer=observer,
-        scaling=_scaling(order, physics, point, w_unit),
+        scaling=_scaling(order, physics, point, x_unit, w_unit),
         outputs=order.outputs,
         inputs=order.inputs,
         known=order.known,
@@ -214,7 +216,9 @@ def _jacobians(physics: PhysicsNetwork, point: OperatingPoint) -> tuple[sparse.c
     pattern_x = _block_pattern(physics, physics.x_at)
     pattern_u = _block_pattern(physics, physics.u_at)
     pattern_w = _block_pattern(physics, physics.w_at)
-    pattern_y = sparse.csr_array(sparse.block_diag([np.ones((p, n)) for p, n in zip(np.diff(physics.y_at), np.diff(physics.x_at), strict=True)]))
+    pattern_y = sparse.csr_array(
+        sparse.block_diag([np.ones((p, n)) for p, n in zip(np.diff(physics.y_at), np.diff(physics.x_at), strict=True)])
+    )
     x, u, w = point.x, point.u, point.w
     return (
         jacobian(lambda v: physics.derivative(v, u, w), x, colour_columns(pattern_x), pattern_x),
@@ -343,10 +347,14 @@ def _unit(k: int, count: int) -> tuple[float, ...]:
     return tuple(1.0 if j == k else 0.0 for j in range(count))
 
 
-def _scaling(order: _Order, physics: PhysicsNetwork, point: OperatingPoint, w_unit: Floats) -> Scaling:
+def _scaling(order: _Order, physics: PhysicsNetwork, point: OperatingPoint, x_unit: Floats, w_unit: Floats) -> Scaling:
     y = physics.outputs(point.x)
     return Scaling(
-        y_zero=np.array([s.scale.to_engineering(float(y[row])) for s, row in zip(order.outputs, order.output_rows, strict=True)]),
+        x_zero=point.x,
+        x_unit=x_unit,
+        y_zero=np.array(
+            [s.scale.to_engineering(float(y[row])) for s, row in zip(order.outputs, order.output_rows, strict=True)]
+        ),
         y_width=np.array([signal.width for signal in order.outputs]),
         u_zero=np.array([s.scale.to_engineering(float(value)) for s, value in zip(order.inputs, point.u, strict=True)]),
         u_width=np.array([signal.width for signal in order.inputs]),
