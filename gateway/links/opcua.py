@@ -16,7 +16,7 @@ import random
 from collections.abc import Coroutine, Mapping, Sequence
 from dataclasses import dataclass, field
 from math import isfinite
-from typing import Any, TypeVar
+from typing import TYPE_CHECKING, Any, TypeVar
 
 from gateway.clock import Clock
 from gateway.links.backoff import Backoff
@@ -24,13 +24,16 @@ from gateway.links.deadline import CallBrokenError, DeadlineMissedError, result_
 from gateway.links.events import LinkEvent, OnLinkEvent
 from gateway.links.keeper import Keeper
 from gateway.links.opcua_addresses import checked_endpoint, parse_all
-from gateway.links.opcua_session import OpcUaSession, SessionLostError, SessionTimes, hush_library
+from gateway.links.opcua_client import hush_library
+from gateway.links.opcua_session import OpcUaSession, SessionLostError, SessionTimes
 from gateway.links.opcua_survey import OpcUaSite
 from gateway.links.opcua_values import UnencodableError, outcome_of, reading
 from gateway.links.protocol import Gathered, LinkState, LinkStatistics, WriteOutcome
-from gateway.plantfile.plant import SiteSpec
 from gateway.signals import MISSING, Tag
 from gateway.status_codes import name
+
+if TYPE_CHECKING:  # the link runs without the plant file's reader and its libraries
+    from gateway.plantfile.plant import SiteSpec
 
 T = TypeVar("T")
 

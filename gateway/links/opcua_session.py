@@ -1,23 +1,15 @@
 """One OPC UA session from its first byte to its last: dialled fresh, lost once, never reused.
 
-asyncua's client serves as a codec and a socket only. Its own supervisor, watchdog, reconnection and channel renewal are
-never started, because they would die or block unseen; its timeouts are set out of the way, because every call here has
-a deadline on the injected clock. A call that fails or misses its deadline loses the session for good:
+Every call has a deadline on the injected clock. One that fails or misses it loses the session for good:
 
     dial -> (read | write | tend)* -> lost(reason) | closed
 
-Losing cuts the socket with a reset, so that a request the peer has not taken yet is thrown away by our kernel instead
-of being delivered when a dead network comes back: a late input is worse than none. What the peer has taken already,
-only its own validity window can refuse.
+A peer that still answers is parted from politely, so that it frees the session; a silent one is cut off.
 """
 
 from __future__ import annotations
 
 import asyncio
-import contextlib
-import logging
-import socket
-import struct
 from collections.abc import Coroutine, Sequence
 from dataclasses import dataclass
 from typing import Any, TypeVar
@@ -31,21 +23,16 @@ from asyncua.ua.uaerrors import UaStatusCodeError
 from gateway.clock import NS, Clock
 from gateway.links import opcua_survey
 from gateway.links.deadline import DeadlineMissedError, within
-from gateway.links.opcua_survey import OpcUaSite, Survey, survey
+from gateway.links.opcua_client import cut, establish, farewell, fresh_client, refusal, why
+from gateway.links.opcua_survey import OpcUaSite, Survey
 from gateway.links.opcua_values import encode
 from gateway.links.protocol import AddressUnknownError, PeerUnreachableError
 from gateway.signals import Tag
-from gateway.status_codes import name
 
 T = TypeVar("T")
 
-LIBRARY_TIMEOUT_S = 60.0
-"""asyncua's own timeout: only so that nothing of it waits for ever, ours always comes first."""
-
 RENEW_AT = 0.75
 """Fraction of a channel's lifetime after which it is renewed (OPC 10000-4, 5.5.2.1)."""
-
-_RESET_ON_CLOSE = struct.pack("ii", 1, 0)
 
 
 @dataclass(frozen=True)
@@ -103,27 +90,27 @@ class OpcUaSession:
             PeerUnreachableError: nobody answered in time, or the peer refused; names the endpoint and the fix.
             AddressUnknownError: some tags cannot be used there.
         """
-        client = _client(site.endpoint, times)
+        client = fresh_client(site.endpoint, times.session_timeout_s, times.channel_lifetime_s)
         due_ns = clock.monotonic_ns() + round(timeout_s * NS)
         try:
-            known = await within(clock, due_ns, _establish(client, site))
+            known = await within(clock, due_ns, establish(client, site))
             return cls(client, site, known, clock, times)
         except (PeerUnreachableError, AddressUnknownError):
-            await _farewell(client, clock, times.call_timeout_s)
+            await farewell(client, clock, times.call_timeout_s)
             raise
         except UaStatusCodeError as error:
-            await _farewell(client, clock, times.call_timeout_s)
-            raise PeerUnreachableError(_refusal(site.endpoint, error)) from error
+            await farewell(client, clock, times.call_timeout_s)
+            raise PeerUnreachableError(refusal(site.endpoint, error)) from error
         except DeadlineMissedError:
-            _cut(client)
+            cut(client)
             raise PeerUnreachableError(
                 f"{site.endpoint} did not answer within {timeout_s:g} s: is the server hung, or the network between?"
             ) from None
         except Exception as error:  # anything from OSError to struct.error
-            _cut(client)
-            raise PeerUnreachableError(_refusal(site.endpoint, error)) from error
+            cut(client)
+            raise PeerUnreachableError(refusal(site.endpoint, error)) from error
         except BaseException:
-            _cut(client)
+            cut(client)
             raise
 
     @property
@@ -194,7 +181,7 @@ class OpcUaSession:
     def lose(self, reason: str) -> None:
         """End the session at once, without another word to the peer; the first reason counts."""
         self._over(reason)
-        _cut(self._client)
+        cut(self._client)
 
     async def close(self) -> None:
         """End the session politely, so that the server frees it, but within one call's timeout."""
@@ -217,9 +204,9 @@ class OpcUaSession:
         except DeadlineMissedError:
             self.lose(f"no answer within {self._times.call_timeout_s * 1e3:g} ms")
         except UaStatusCodeError as error:
-            await self._part(_why(error))
+            await self._part(why(error))
         except Exception as error:  # noqa: BLE001 - whatever the library raises, the session is over
-            self.lose(_why(error))
+            self.lose(why(error))
         raise SessionLostError(self.lost.result())
 
     async def _end_if(self, reason: str) -> None:
@@ -230,7 +217,7 @@ class OpcUaSession:
 
     async def _part(self, reason: str) -> None:
         self._over(reason)
-        await _farewell(self._client, self._clock, self._times.call_timeout_s)
+        await farewell(self._client, self._clock, self._times.call_timeout_s)
 
     def _over(self, reason: str) -> None:
         if not self.lost.done():
@@ -247,84 +234,3 @@ class OpcUaSession:
             while self._client.state is UaClientState.CONNECTED:
                 await changes.next_change()
         self.lose("the peer closed the connection")
-
-
-def hush_library() -> None:
-    """Keep asyncua's log to its errors: its warnings are about what this link expects and reports itself."""
-    logger = logging.getLogger("asyncua")
-    if logger.level == logging.NOTSET:
-        logger.setLevel(logging.ERROR)
-
-
-def _client(endpoint: str, times: SessionTimes) -> Client:
-    client = Client(endpoint, timeout=LIBRARY_TIMEOUT_S)
-    client.name = "Lengthsman"
-    client.description = "Lengthsman gateway"
-    client.application_uri = "urn:lengthsman:gateway"
-    client.product_uri = "urn:lengthsman"
-    client.session_timeout = round(times.session_timeout_s * 1e3)
-    client.secure_channel_timeout = round(times.channel_lifetime_s * 1e3)
-    return client
-
-
-async def _establish(client: Client, site: OpcUaSite) -> Survey:
-    await client.connect_socket()
-    await client.send_hello()
-    await client.open_secure_channel()
-    await client.create_session()
-    await client.activate_session()
-    return await survey(client, site)
-
-
-async def _farewell(client: Client, clock: Clock, timeout_s: float) -> None:
-    """Close session, channel and socket if the peer still plays along, cut the socket otherwise."""
-
-    async def part() -> None:
-        await client.uaclient.close_session(delete_subscriptions=True)
-        await client.close_secure_channel()
-
-    parted = False
-    try:
-        with contextlib.suppress(Exception):  # it is over either way
-            await within(clock, clock.monotonic_ns() + round(timeout_s * NS), part())
-            parted = True
-    finally:
-        if parted:
-            client.disconnect_socket()
-        else:
-            _cut(client)
-
-
-def _cut(client: Client) -> None:
-    protocol = client.uaclient.protocol
-    transport = None if protocol is None else protocol.transport
-    if transport is None:
-        return
-    wire = transport.get_extra_info("socket")
-    if wire is not None:
-        with contextlib.suppress(OSError):  # closed already: then nothing is left to throw away
-            wire.setsockopt(socket.SOL_SOCKET, socket.SO_LINGER, _RESET_ON_CLOSE)
-    transport.abort()
-
-
-def _why(error: Exception) -> str:
-    if isinstance(error, UaStatusCodeError):
-        return f"the server answered {name(error.code)}"
-    if isinstance(error, ConnectionError):
-        return f"the connection broke ({error})" if str(error) else "the connection broke"
-    return f"{type(error).__name__}: {error}" if str(error) else type(error).__name__
-
-
-def _refusal(endpoint: str, error: Exception) -> str:
-    match error:
-        case ConnectionRefusedError():
-            fix = "nobody listens there: start the server, or correct the site's endpoint"
-        case socket.gaierror():
-            fix = "the host name is not known: correct the site's endpoint, or the name service"
-        case UaStatusCodeError():
-            fix = f"{_why(error)} while the session was opened: see the server's log for its reason"
-        case OSError():
-            fix = f"{error.strerror or error}: correct the site's endpoint, or the network"
-        case _:
-            fix = f"{_why(error)} while the session was opened: is it an OPC UA server at all?"
-    return f"{endpoint} cannot be reached: {fix}"
