@@ -25,6 +25,7 @@ from sim_plant.panel.acceptance import Outcome, Written, write
 from sim_plant.panel.charge import Charge
 from sim_plant.panel.readings import readings
 from sim_plant.panel.state import (
+    KEEP,
     DrivenPoint,
     EventKind,
     LocalAction,
@@ -36,6 +37,7 @@ from sim_plant.panel.state import (
 from sim_plant.panel.timing import set_permit, tick
 
 __all__ = [
+    "KEEP",
     "Charge",
     "DrivenPoint",
     "EventKind",

@@ -83,6 +83,8 @@ class _Request:
             outcome = self._stage(position, tag, value)
         elif tag in self.settings.section_of_bit:
             outcome = self._take_or_hand_back(self.settings.section_of_bit[tag], value)
+        elif not self.settings.supervised:
+            outcome = Outcome.UNKNOWN
         elif tag in _COUNTER_BITS:
             outcome = self._count(tag, value)
         else:
@@ -96,6 +98,9 @@ class _Request:
         if not isfinite(value):
             self.spoiled = tag
             return Outcome.NOT_FINITE
+        if not self.settings.supervised:
+            self._command([(tag, value)])
+            return Outcome.TAKEN
         self.staged.append((position, tag, value))
         return Outcome.UNCOMMITTED
 
@@ -163,30 +168,39 @@ class _Request:
             yield Outcome.NO_EXPIRY, "panel.expires must come before panel.period in the same request"
         elif now_ms > self.expires_ms:
             yield Outcome.EXPIRED, f"expired at {self.expires_ms} ms, {now_ms - self.expires_ms} ms ago"
-        elif self.expires_ms - now_ms > window_ms:
+        elif window_ms is not None and self.expires_ms - now_ms > window_ms:
             yield Outcome.TOO_FAR, f"expires {self.expires_ms - now_ms} ms ahead, the window is {window_ms} ms"
         if period <= state.accepted and not state.restart:
             yield Outcome.REPLAYED, f"not newer than the last accepted, {state.accepted}"
 
     def _apply(self, period: int) -> None:
-        commands, clamped = dict(self.state.commands), self.state.clamped
+        told: list[tuple[str, float]] = []
         for position, tag, value in self.staged:
-            point = self.settings.point_of[tag]
-            if not self.state.in_charge(point.section):
+            if self.state.in_charge(self.settings.point_of[tag].section):
+                told.append((tag, value))
+                self.outcomes[position] = Outcome.TAKEN
+            else:
                 self.outcomes[position] = Outcome.NOT_IN_CHARGE
-                continue
+        self._command(told)
+        if self.state.refused:
+            self._note(EventKind.ACCEPTED_AGAIN, f"set {period} accepted, after {self.state.refused} refused in a row")
+        self.state = replace(self.state, accepted=period, restart=False, refusal="", refused=0)
+
+    def _command(self, inputs: Sequence[tuple[str, float]]) -> None:
+        """Tell actuators what to do, inside their spans whatever was asked."""
+        commands, clamped = dict(self.state.commands), self.state.clamped
+        for tag, value in inputs:
+            point = self.settings.point_of[tag]
             commands[tag] = min(max(value, point.low), point.high)
-            self.outcomes[position] = Outcome.TAKEN
             if commands[tag] != value:
                 clamped = (clamped + 1) % (1 << 32)
                 self._note(EventKind.CLAMPED, f"{tag} asked for {value:g}, clamped to {commands[tag]:g}")
-        self.state = replace(
-            self.state, commands=commands, clamped=clamped, accepted=period, restart=False, refusal="", refused=0
-        )
+        self.state = replace(self.state, commands=commands, clamped=clamped)
 
     def _refuse(self, period: int, why: str) -> None:
+        kind = EventKind.REFUSED_AGAIN if self.state.refused else EventKind.REFUSED
         self.state = replace(self.state, refusal=f"set {period} refused: {why}", refused=self.state.refused + 1)
-        self._note(EventKind.REFUSED, self.state.refusal)
+        self._note(kind, self.state.refusal)
 
     def _note(self, kind: EventKind, text: str) -> None:
         self.events.append(PanelEvent(kind, text))

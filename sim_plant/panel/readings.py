@@ -9,6 +9,8 @@ from sim_plant.panel.state import PanelSettings, PanelState
 
 def readings(settings: PanelSettings, state: PanelState) -> Mapping[str, float | int | bool | str]:
     """Every value of the panel by tag; a driven tag shows the actuator's command, never a value nobody committed."""
+    if not settings.supervised:
+        return state.commands
     own: dict[str, float | int | bool | str] = {
         "panel.heartbeat": state.heartbeat,
         "panel.permit": state.permit,

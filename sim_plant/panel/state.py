@@ -40,6 +40,10 @@ class LocalAction:
         return self.to if abs(self.to - value) <= reach else value + (reach if self.to > value else -reach)
 
 
+KEEP = LocalAction()
+"""Leave the actuator where it is."""
+
+
 @dataclass(frozen=True)
 class DrivenPoint:
     """One actuator: the panel never lets its command leave [low, high], whoever asks.
@@ -53,7 +57,7 @@ class DrivenPoint:
     low: float
     high: float
     rest: float
-    local: LocalAction = LocalAction()
+    local: LocalAction = KEEP
 
     def __post_init__(self) -> None:
         if not (isfinite(self.low) and isfinite(self.high) and self.low < self.high):
@@ -67,18 +71,23 @@ class DrivenPoint:
 class PanelSettings:
     """Actuators by section, watchdog W and longest validity V in milliseconds.
 
+    Without times nobody supervises: every section is control's for ever, and each value written to an actuator is
+    clamped and taken at once. There are such plants; the bench has to be able to stand in for one.
+
     Raises:
-        ValueError: two actuators with one tag, or a time that isn't positive.
+        ValueError: two actuators with one tag, one time without the other, or a time that isn't positive.
     """
 
     points: tuple[DrivenPoint, ...]
     sections: tuple[str, ...]
-    watchdog_ms: int
-    window_ms: int
+    watchdog_ms: int | None = None
+    window_ms: int | None = None
 
     def __post_init__(self) -> None:
+        if (self.watchdog_ms is None) != (self.window_ms is None):
+            raise ValueError(f"panel watchdog_ms={self.watchdog_ms}, window_ms={self.window_ms}: give both or none")
         for name, value in (("watchdog_ms", self.watchdog_ms), ("window_ms", self.window_ms)):
-            if value <= 0:
+            if value is not None and value <= 0:
                 raise ValueError(f"panel {name}={value}: must be above zero")
         if len(self.point_of) != len(self.points):
             raise ValueError("two driven signals share one tag: tags must be unique")
@@ -90,9 +99,16 @@ class PanelSettings:
         """Actuator by tag."""
         return {point.tag: point for point in self.points}
 
+    @property
+    def supervised(self) -> bool:
+        """Whether there is anybody between control and the actuators."""
+        return self.watchdog_ms is not None
+
     @cached_property
     def section_of_bit(self) -> Mapping[str, str]:
-        """Section by the tag of its in-charge bit."""
+        """Section by the tag of its in-charge bit; none without supervision."""
+        if not self.supervised:
+            return {}
         return {f"{section}.in_charge": section for section in self.sections}
 
 
@@ -105,6 +121,10 @@ class EventKind(StrEnum):
     TAKEN = "taken"
     HANDED_BACK = "handed_back"
     REFUSED = "refused"
+    REFUSED_AGAIN = "refused_again"
+    """Another one, with none accepted since."""
+    ACCEPTED_AGAIN = "accepted_again"
+    """The first after one or more refused."""
     CLAMPED = "clamped"
 
 
@@ -166,8 +186,8 @@ class PanelState:
 
 
 def power_up(settings: PanelSettings) -> PanelState:
-    """The panel at power-up: clock at zero, permit on, every actuator at its rest value."""
+    """Return the panel at power-up: clock at zero, permit on, every actuator at its rest value."""
     return PanelState(
-        charge=dict.fromkeys(settings.sections, Charge.REST),
+        charge=dict.fromkeys(settings.sections, Charge.REST if settings.supervised else Charge.CONTROL),
         commands={point.tag: point.rest for point in settings.points},
     )

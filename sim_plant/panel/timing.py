@@ -20,8 +20,10 @@ def tick(settings: PanelSettings, state: PanelState, clock_ms: int) -> tuple[Pan
     """
     if clock_ms < state.clock_ms:
         raise ValueError(f"panel clock_ms={clock_ms}: already at {state.clock_ms}, it must never run backwards")
+    if settings.watchdog_ms is None or not state.control_present:
+        return _ramp(settings, state, clock_ms), ()
     runs_out_ms = state.still_since_ms + settings.watchdog_ms
-    if not state.control_present or clock_ms < runs_out_ms:
+    if clock_ms < runs_out_ms:
         return _ramp(settings, state, clock_ms), ()
     tripped = replace(_ramp(settings, state, runs_out_ms), tripped=True, restart=True).after(Cause.TRIP, state.charge)
     event = PanelEvent(

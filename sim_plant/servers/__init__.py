@@ -1,0 +1,1 @@
+"""The simulated plant on a wire, one file per protocol."""
