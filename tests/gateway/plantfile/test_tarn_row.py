@@ -76,7 +76,7 @@ def test_its_levels(plant: Plant) -> None:
     for level in levels:
         assert (level.unit, level.scale) == ("cm", Scale(0.01))
         assert (level.span, level.soft, level.target, level.price) == ((0.0, 40.0), (4.0, 36.0), 20.0, 1.0)
-        assert (level.instrument, level.noise, level.jump_per_s) == (Instrument(0.02, 0.005), 0.02, 4.0)
+        assert (level.instrument, level.noise, level.jump_per_s) == (Instrument(0.02, 0.001), 0.02, 4.0)
 
 
 def test_its_pumps(plant: Plant) -> None:
