@@ -93,9 +93,10 @@ def advance(network: Network, state: PlantState, u: Floats, w: Floats, dt_s: flo
         return state
     count = max(1, ceil(dt_s / substep_s - 1e-9))  # ten times 0.05 s are 0.5 s, whatever rounding says
     x, spilled, missing = state.x, state.spilled_m3, state.missing_m3
-    for _ in range(count):
-        x, lost, absent = network.clip(_runge_kutta(network, x, u, w, dt_s / count))
-        spilled, missing = spilled + lost, missing + absent
+    with np.errstate(over="ignore", invalid="ignore"):  # a step that leaves the finite numbers is refused below
+        for _ in range(count):
+            x, lost, absent = network.clip(_runge_kutta(network, x, u, w, dt_s / count))
+            spilled, missing = spilled + lost, missing + absent
     if not isfinite(x.sum()):
         raise FloatingPointError(f"the plant left the finite numbers; substep_s is {substep_s}, take a shorter one")
     return PlantState(x=x, time_s=state.time_s + dt_s, spilled_m3=spilled, missing_m3=missing)
