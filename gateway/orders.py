@@ -104,10 +104,7 @@ def settle(plant: Plant, orders: Orders, happened: Happened) -> tuple[Answer, ..
     settled = []
     for asked, places, ask in orders.pending:
         refused = {
-            names[i]: refusal.sentence
-            for i in places
-            for refusal in happened.refusals.get(i, ())
-            if refusal.ask is ask
+            names[i]: refusal.sentence for i in places for refusal in happened.refusals.get(i, ()) if refusal.ask is ask
         }
         state = RequestState.REFUSED if len(refused) == len(places) else RequestState.APPLIED
         settled.append(Answer(asked, state, "; ".join(f"{name}: {reason}" for name, reason in refused.items())))

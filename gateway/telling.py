@@ -34,7 +34,9 @@ def layout_of(design: PlantDesign) -> Layout:
     return Layout.of(design.plant, estimated=names, panel=panel)
 
 
-def record_of(design: PlantDesign, layout: Layout, after: Standing, happened: Happened, due_wall_ns: int) -> PeriodRecord:
+def record_of(
+    design: PlantDesign, layout: Layout, after: Standing, happened: Happened, due_wall_ns: int
+) -> PeriodRecord:
     """One journal record of one period."""
     judged = happened.admission.by_tag()
     readings = happened.gathered.readings
@@ -133,7 +135,9 @@ def _quality_notices(
         return ()
     tags = {signal.tag: signal for section in design.plant.sections for signal in section.signals}
     return [
-        sentences.quality(tags[tag].section, tags[tag].name, before[tag], quality, happened.gathered.readings[tag].value)
+        sentences.quality(
+            tags[tag].section, tags[tag].name, before[tag], quality, happened.gathered.readings[tag].value
+        )
         for tag, quality in now.items()
         if tag in before and before[tag] is not quality and tag in happened.gathered.readings
     ]

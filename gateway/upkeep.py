@@ -65,9 +65,7 @@ class IntervalSummary:
             periods=self._periods,
             misses=dict(self._misses),
             states=dict(Counter(hold.state for hold in after.holds)),
-            held=[
-                name for name, hold in zip(self._names, after.holds, strict=True) if hold.state is State.HOLDING
-            ],
+            held=[name for name, hold in zip(self._names, after.holds, strict=True) if hold.state is State.HOLDING],
             slack_median_us=median(self._slack_us) if self._slack_us else None,
             slack_least_us=min(self._slack_us) if self._slack_us else None,
         )
