@@ -5,8 +5,8 @@ the same facts as data. The same notice becomes one log line (`gateway.logs`) an
 (`gateway.journal.Event.of`), so that both tell one story in one wording.
 
 A sentence stands alone: it names the section, the peer or the person, says what is so now, and, where somebody has to
-do something about it, what. Numbers carry their unit. The module is long because it is the one place. Levels: `info` is the ordinary course of a night, `warning` is
-what the gateway copes with, `error` is what waits for a person.
+do something about it, what. Numbers carry their unit. Levels: `info` is the ordinary course of a night, `warning` is
+what the gateway copes with, `error` is what waits for a person. The module is long because it is the one place.
 """
 
 from __future__ import annotations
@@ -440,6 +440,31 @@ def journal_lost(what: str, cause: str, count: int, first_k: int | None, last_k:
         Level.ERROR,
         _full_stop(f"The journal lacks {_count(count, what)}{where}: {cause}"),
         detail={"what": what, "cause": cause, "count": count, "first_k": first_k, "last_k": last_k},
+    )
+
+
+def requests_failing(error: str) -> Notice:
+    """The file of requests cannot be read or written."""
+    return Notice(
+        Kind.REQUEST,
+        Level.ERROR,
+        f"Requests cannot be taken: {_full_stop(error)} Periods go on, but nobody can hold or rearm a section.",
+        detail={"state": "failing", "error": error},
+    )
+
+
+def requests_recovered() -> Notice:
+    """The file of requests works again."""
+    return Notice(Kind.REQUEST, Level.INFO, "Requests are taken again.", detail={"state": "recovered"})
+
+
+def requests_dead(error: str) -> Notice:
+    """The thread that takes requests died."""
+    return Notice(
+        Kind.REQUEST,
+        Level.ERROR,
+        f"The thread that takes requests died: {_full_stop(error)} Nobody can hold or rearm a section.",
+        detail={"state": "dead", "error": error},
     )
 
 
