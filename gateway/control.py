@@ -12,6 +12,7 @@ import os
 import platform
 import signal
 import socket
+import sys
 
 from contextlib import AsyncExitStack
 from dataclasses import dataclass, replace
@@ -120,7 +121,10 @@ async def _run(options: RunOptions, design: PlantDesign, site: SiteSpec, clock: 
     authority = default_authority(site.kind) if options.authority is None else Authority(options.authority)
     tags = tags_of(plant, site)
     async with AsyncExitStack() as stack:
-        told = _Teller(run_id, site.endpoint, [section.name for section in plant.sections])
+        log = logs.start(sys.stderr, clock.wall_ns)
+        stack.callback(log.close)
+        log.run = run_id
+        told = _Teller(log, site.endpoint, [section.name for section in plant.sections])
         link = OpcUaLink.for_site(site, tags, clock, on_event=told.link_event)
         try:
             await link.open(DIAL_TIMEOUT_S)
@@ -202,8 +206,8 @@ def _stop_on_signals(stop: asyncio.Event) -> None:
 class _Teller:
     """Turns what links, journal and requests report into notices, from whichever thread it comes."""
 
-    def __init__(self, run_id: str, endpoint: str, sections: list[str]) -> None:
-        self._log = logs.logger(run_id)
+    def __init__(self, log: logs.Log, endpoint: str, sections: list[str]) -> None:
+        self._log = log
         self._endpoint = endpoint
         self._sections = sections
         self._connects = 0
@@ -215,7 +219,7 @@ class _Teller:
 
     def log(self, notice: Notice, k: int | None) -> None:
         """One log line."""
-        logs.write(self._log, notice, k)
+        self._log.tell(notice, k)
 
     def from_thread(self, notice: Notice) -> None:
         """Log and journal; both are safe from any thread."""

@@ -23,12 +23,13 @@ set the clock back). Age is judged twice, by the desk and again by the period th
 The words (`words`):
 
     hold SECTION|all        rearm SECTION|all        authority observe|limited|full        target TAG VALUE [UNIT]
+    rehearse slow PERIODS        on a bench only: so many syntheses come late
 """
 
 from gateway.requests.asking import Answer, NobodyThereError, ask, whoami
 from gateway.requests.desk import Asked, DeskStatistics, RequestDesk, Taken
 from gateway.requests.file import RequestState, void_reason
-from gateway.requests.words import Hold, Rearm, Request, RequestError, SetAuthority, SetTarget, parse_request
+from gateway.requests.words import Hold, Rearm, Rehearse, Request, RequestError, SetAuthority, SetTarget, parse_request
 
 __all__ = [
     "Answer",
@@ -37,6 +38,7 @@ __all__ = [
     "Hold",
     "NobodyThereError",
     "Rearm",
+    "Rehearse",
     "Request",
     "RequestDesk",
     "RequestError",

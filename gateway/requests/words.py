@@ -49,7 +49,17 @@ class SetTarget:
     value: float
 
 
-Request = Hold | Rearm | SetAuthority | SetTarget
+@dataclass(frozen=True)
+class Rehearse:
+    """Let the next syntheses be late; control refuses it anywhere but on a bench."""
+
+    slow_periods: int
+
+
+Request = Hold | Rearm | SetAuthority | SetTarget | Rehearse
+
+MOST_SLOW = 100
+"""Longest rehearsal of slow syntheses, periods."""
 
 
 def parse_request(words: str | Sequence[str], plant: Plant) -> Request:
@@ -126,14 +136,22 @@ def _value(text: str, signal: Signal) -> float:
     return value
 
 
+def _rehearse(rest: Sequence[str], _: Plant) -> Request:
+    if len(rest) != 2 or rest[0] != "slow" or not rest[1].isdecimal() or not 1 <= int(rest[1]) <= MOST_SLOW:
+        got = " ".join(rest) or "nothing"
+        raise RequestError(f"rehearse wants “slow” and a number of periods from 1 to {MOST_SLOW}; got “{got}”")
+    return Rehearse(int(rest[1]))
+
+
 _READERS: Mapping[str, Callable[[Sequence[str], Plant], Request]] = {
     "hold": _hold,
     "rearm": _rearm,
     "authority": _authority,
     "target": _target,
+    "rehearse": _rehearse,
 }
 
-_USAGES = "hold SECTION|all, rearm SECTION|all, authority observe|limited|full, target TAG VALUE"
+_USAGES = "hold SECTION|all, rearm SECTION|all, authority observe|limited|full, target TAG VALUE, rehearse slow PERIODS"
 
 
 def _unknown(word: str, what: str, right: Iterable[str]) -> str:
