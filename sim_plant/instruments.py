@@ -2,7 +2,7 @@
 
 Problem: control sees readings, not the plant. For m transmitters sampled every Δt, in engineering units:
 
-    lag          y_f ← y_f + (1 − e^(−Δt/τ)) (y − y_f)      exact for an input held over Δt; τ = 0: y_f = y
+    lag          y_f ← y + e^(−Δt/τ) (y_f − y)              exact for an input held over Δt; τ = 0: y_f = y
     noise        y_n = y_f + σ ξ,   ξ standard normal, a pure function of (seed, sample number, transmitter)
     resolution   y_r = q round(y_n / q);                    q = 0: y_r = y_n
     saturation   y_r outside [lo − 1.25 %, hi + 3.125 %] of span reads that limit, with an uncertain status
@@ -82,8 +82,8 @@ class Instruments:
         self._seed = seed
         self._noise = np.array([instrument.noise for instrument in instruments])
         self._resolution = np.array([instrument.resolution for instrument in instruments])
-        self._follows = np.ones_like(lags_s)
-        self._follows[lags_s > 0.0] = -np.expm1(-step_s / lags_s[lags_s > 0.0])
+        self._memory = np.zeros_like(lags_s)
+        self._memory[lags_s > 0.0] = np.exp(-step_s / lags_s[lags_s > 0.0])
         self._lowest = low - BELOW_SPAN * (high - low)
         self._highest = high + ABOVE_SPAN * (high - low)
 
@@ -93,7 +93,7 @@ class Instruments:
 
     def sample(self, state: InstrumentsState, truth: Floats) -> tuple[InstrumentsState, Floats, Codes]:
         """Next readings (m) and their status codes (m) for a truth (m) held since the last sample."""
-        lagged = state.lagged + self._follows * (truth - state.lagged)
+        lagged = truth + self._memory * (state.lagged - truth)
         drawn = generator(self._seed, Stream.INSTRUMENTS, 0, state.sample).standard_normal(lagged.size)
         noisy = lagged + self._noise * drawn
         steps = np.where(self._resolution > 0.0, self._resolution, 1.0)
