@@ -106,6 +106,18 @@ def test_a_missing_last_value_hands_back_the_section() -> None:
     assert next_inputs([pump(RAMP)], {}, 0.5).hand_back
 
 
+def test_a_ramp_stops_at_the_edge_of_the_band() -> None:
+    """Limited authority limits the hold too: as near to the safe value as it lets us, and there it rests."""
+    held = next_inputs([pump(RAMP)], {"tank-1.pump": 42.0}, 0.5, {"tank-1.pump": (40.0, 60.0)})
+    assert (held.values, held.settled) == ({"tank-1.pump": 40.0}, True)
+    assert path(pump(RAMP), 46.0, 0.5, 3, (40.0, 60.0)) == (41.0, 40.0, 40.0)
+
+
+def test_a_value_outside_the_band_is_handed_back() -> None:
+    """What the panel moved out of the band cannot be kept by us."""
+    assert next_input(pump(None), 70.0, 0.5, (40.0, 60.0)) == HANDED_BACK
+
+
 def test_path_is_the_repeated_step() -> None:
     """Neighbours are told the whole ramp, then rest."""
     assert path(pump(RAMP), 12.0, 0.5, 4) == (7.0, 2.0, 0.0, 0.0)
