@@ -122,7 +122,7 @@ def test_one_step_of_many_substeps_is_many_steps() -> None:
     np.testing.assert_array_equal(at_once.x, in_parts.x)
 
 
-@pytest.mark.parametrize(("dt_s", "substep_s", "steps"), [(0.5, 0.05, 10), (0.5, 0.2, 3), (0.1, 0.5, 1)])
+@pytest.mark.parametrize(("dt_s", "substep_s", "steps"), [(0.5, 0.05, 10), (0.5, 0.2, 3), (0.1, 0.5, 1), (2.1, 0.3, 7)])
 def test_substeps_are_equal_and_no_longer_than_asked(dt_s: float, substep_s: float, steps: int) -> None:
     """A step is cut into the fewest equal parts, and rounding adds none."""
     network, start = Network([("tank", TANK)]), PlantState.start(Network([("tank", TANK)]), np.array([0.2, 0.0]))
