@@ -13,7 +13,6 @@ import platform
 import signal
 import socket
 import sys
-
 from contextlib import AsyncExitStack
 from dataclasses import dataclass, replace
 from importlib.metadata import version
@@ -21,7 +20,7 @@ from pathlib import Path
 
 from controllers import ControllerError
 from gateway import logs, sentences
-from gateway.authority import Authority, AuthorityState, default_authority
+from gateway.authority import Authority, default_authority
 from gateway.clock import Clock, RealClock
 from gateway.design import PlantDesign, build_design
 from gateway.exit_codes import ExitCode
@@ -53,6 +52,7 @@ class RunOptions:
         requests: path of the file of requests.
         for_s: seconds to run, None until stopped.
         endpoint: overrides the site's.
+        override: full authority over a live site without a passed record, because a person insists.
     """
 
     plant_file: Path
@@ -62,6 +62,7 @@ class RunOptions:
     authority: str | None = None
     for_s: float | None = None
     endpoint: str | None = None
+    override: bool = False
 
 
 class StartError(Exception):
@@ -143,8 +144,7 @@ async def _run(options: RunOptions, design: PlantDesign, site: SiteSpec, clock: 
         _opening_words(service, journal, design, site, authority)
         stop = asyncio.Event()
         _stop_on_signals(stop)
-        state = AuthorityState.start(authority)
-        await service.run(state, stop, for_s=options.for_s)
+        await service.run(authority, stop, for_s=options.for_s, override=options.override)
         how[0] = RunEnd.STOPPED if stop.is_set() else RunEnd.COMPLETED
         service.tell(sentences.run_ended(how[0], service.tally.periods, service.tally.missed))
         code = ExitCode.HELD if service.tally.held else ExitCode.DONE

@@ -6,10 +6,11 @@ change anything. Holds and rearms go to the hold table, section by section; the 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
-from gateway.authority import Authority, AuthorityState
+from gateway.authority import Authority, Changed, Denied, change
+from gateway.design import PlantDesign
 from gateway.hold import Ask
 from gateway.period import Happened
 from gateway.plantfile.plant import Plant, SiteKind
@@ -36,7 +37,7 @@ class Orders:
         answers: given already.
         pending: requests whose answer the hold table gives, with their sections.
         slow_periods: rehearsal: so many syntheses are to be late.
-        authority: change of authority, before and after, and who asked; None without one.
+        changed: change of authority and who asked for it; None without one.
     """
 
     standing: Standing
@@ -44,28 +45,26 @@ class Orders:
     answers: tuple[Answer, ...] = ()
     pending: tuple[tuple[Asked, tuple[int, ...], Ask], ...] = ()
     slow_periods: int = 0
-    authority: tuple[Authority, Authority, str] | None = None
+    changed: tuple[Changed, str] | None = None
 
 
-def apply_requests(
-    plant: Plant,
-    site: SiteKind,
-    standing: Standing,
-    asked: Sequence[Asked],
-    change_authority: Callable[[AuthorityState, Authority], tuple[AuthorityState, Ask | None, str]],
-) -> Orders:
-    """Apply what was asked since the last period, in order.
+def change_authority(
+    design: PlantDesign, site: SiteKind, standing: Standing, to: Authority, *, override: bool = False
+) -> Changed | Denied:
+    """Decide a change of authority by what the inputs are told now."""
+    found = {signal.tag: float(value) for signal, value in zip(design.inputs, standing.last, strict=True)}
+    return change(standing.authority, to, design.inputs, found, site, soaked=False, override=override)
 
-    Args:
-        change_authority: returns the new authority, what the hold table of every section is asked for it, and the
-            reason of a refusal, empty when there is none.
-    """
+
+def apply_requests(design: PlantDesign, site: SiteKind, standing: Standing, asked: Sequence[Asked]) -> Orders:
+    """Apply what was asked since the last period, in order."""
+    plant = design.plant
     index = {section.name: i for i, section in enumerate(plant.sections)}
     asks: dict[int, list[Ask]] = {}
     answers: list[Answer] = []
     pending: list[tuple[Asked, tuple[int, ...], Ask]] = []
     slow = 0
-    changed: tuple[Authority, Authority, str] | None = None
+    changed: tuple[Changed, str] | None = None
     for one in asked:
         match one.request:
             case Hold(sections) | Rearm(sections):
@@ -78,16 +77,15 @@ def apply_requests(
                 standing = replace(standing, targets={**standing.targets, tag: value})
                 answers.append(Answer(one, RequestState.APPLIED))
             case SetAuthority(wanted):
-                before = standing.authority
-                after, everybody, refusal = change_authority(before, Authority(wanted))
-                if refusal:
-                    answers.append(Answer(one, RequestState.REFUSED, refusal))
+                decided = change_authority(design, site, standing, Authority(wanted))
+                if isinstance(decided, Denied):
+                    answers.append(Answer(one, RequestState.REFUSED, decided.sentence))
                     continue
-                standing = replace(standing, authority=after)
-                changed = (before.authority, after.authority, one.who)
-                if everybody is not None:
+                standing = replace(standing, authority=decided.state)
+                changed = (decided, one.who)
+                if decided.ask is not None:
                     for i in range(len(plant.sections)):
-                        asks.setdefault(i, []).append(everybody)
+                        asks.setdefault(i, []).append(decided.ask)
                 answers.append(Answer(one, RequestState.APPLIED))
             case Rehearse(periods):
                 if site is not SiteKind.BENCH:

@@ -24,7 +24,7 @@ from gateway.deadline import Cutoff, Stopwatch
 from gateway.design import PlantDesign
 from gateway.estimating import Seen, estimate_period
 from gateway.hold import Ask, Refusal, SectionHold, Transition, Writes, advance, may_drive, writes
-from gateway.inputs import Outgoing, compose_set, intended_paths, outgoing_of
+from gateway.inputs import LEFT_ALONE, Outgoing, compose_set, intended_paths, outgoing_of
 from gateway.links.protocol import Gathered, Link, WriteOutcome
 from gateway.panel_view import PanelView, view_panel
 from gateway.period_rows import period_rows
@@ -92,7 +92,7 @@ class Period:
         self._settings = design.plant.hold
         self._rules = plan_admission(design.plant)
         self._everybody = frozenset(section.name for section in design.plant.sections)
-        self._guard = Guard(design.inputs, design.plant.period_s)
+        self._guard = Guard(design.inputs, [section.name for section in design.plant.sections], design.plant.period_s)
 
     async def run(
         self, k: int, due_ns: int, standing: Standing, asks: Mapping[int, Sequence[Ask]]
@@ -153,16 +153,22 @@ class Period:
             refused,
         )
         guarded = self._guard.check(wanted, last, bands)
-        found = [
-            [verdict, Verdict.REFUSED] if bad else [verdict]
-            for verdict, bad in zip(judged, guarded.refused, strict=True)
+        verdicts = [
+            first_cause((v, Verdict.REFUSED)) if bad else v for v, bad in zip(judged, guarded.refused, strict=True)
         ]
-        verdicts = [first_cause(causes) for causes in found]
         holds = self._advanced(standing.holds, k, verdicts, asks)
         parts = [
             outgoing_of(design, i, writes(hold.state), guarded.values, last, view)
             for i, (hold, _, _) in enumerate(holds)
         ]
+        stopped = self._stopped(parts, last, bands)
+        if stopped.any():
+            # What a hold would write is looked at like everything else; what fails stays off the wire.
+            verdicts = [
+                first_cause((v, Verdict.REFUSED)) if bad else v for v, bad in zip(verdicts, stopped, strict=True)
+            ]
+            holds = self._advanced(standing.holds, k, verdicts, asks)
+            parts = [LEFT_ALONE if bad else part for part, bad in zip(parts, stopped, strict=True)]
 
         # Write
         heartbeat = (standing.heartbeat + 1) % 2**32
@@ -222,6 +228,13 @@ class Period:
             advance(hold, self._settings, k, verdict, asks.get(i, ()))
             for i, (hold, verdict) in enumerate(zip(holds, verdicts, strict=True))
         ]
+
+    def _stopped(self, parts: Sequence[Outgoing], last: Floats, bands: Mapping[str, tuple[float, float]]) -> Bools:
+        """Sections whose outgoing values, whoever made them, fail the last look before the wire."""
+        going = {tag: value for part in parts for tag, value in part.values.items()}
+        values = np.array([going.get(signal.tag, np.nan) for signal in self._design.inputs])
+        refused = self._guard.check(values, last, bands).refused
+        return refused & np.array([bool(part.values) for part in parts])
 
     @staticmethod
     def _set_refused(standing: Standing, view: PanelView) -> Bools:

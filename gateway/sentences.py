@@ -191,6 +191,16 @@ def authority(before: str, after: str, who: str) -> Notice:
     )
 
 
+def authority_denied(wanted: str, why: str) -> Notice:
+    """The authority a run was started with is not given."""
+    return Notice(
+        Kind.AUTHORITY,
+        Level.ERROR,
+        _full_stop(f"Authority {wanted} is denied: {why}"),
+        detail={"wanted": wanted, "why": why},
+    )
+
+
 def request(number: int, who: str, words: str, state: str, reason: str) -> Notice:
     """What became of what a person asked; `reason` is empty when nothing needs saying."""
     because = f": {reason}" if reason else ""

@@ -20,13 +20,13 @@ from controllers import Measured
 from gateway import sentences
 from gateway.admit import first_memory
 from gateway.admit_rules import plan_admission
-from gateway.authority import AuthorityState
+from gateway.authority import Authority, AuthorityState, Denied, at_start
 from gateway.clock import NS, Clock, Schedule, WallStepWatch
 from gateway.design import PlantDesign
 from gateway.hold import State, start
 from gateway.journal import Event, Journal, PeriodRecord
 from gateway.links.protocol import Link
-from gateway.orders import Answer, Orders, apply_requests, settle
+from gateway.orders import Answer, Orders, apply_requests, change_authority, settle
 from gateway.period import Happened, Period
 from gateway.plantfile.plant import SiteKind
 from gateway.requests import Asked, RequestDesk
@@ -57,7 +57,7 @@ class Tally:
 
 def first_standing(design: PlantDesign, authority: AuthorityState, first_k: int, *, ended_cleanly: bool) -> Standing:
     """Standing before the first period: nothing is known, and after an unclean end everything is on hold."""
-    sections, writes = len(design.plant.sections), authority.writes
+    sections, writes = len(design.plant.sections), authority.level.writes
     return Standing(
         holds=tuple(start(first_k, taken=writes, ended_cleanly=ended_cleanly) for _ in range(sections)),
         authority=authority,
@@ -129,6 +129,7 @@ class Service:
             design.plant.period_s,
         )
         self._told = Told({}, None)
+        self._wanted: tuple[Authority, bool] | None = None
         self.tally = Tally()
 
     def tell(self, notice: Notice, k: int | None = None) -> None:
@@ -136,10 +137,24 @@ class Service:
         self._tell(notice, k)
         self._journal.put_event(Event.of(notice, self._clock.wall_ns(), k))
 
-    async def run(self, authority: AuthorityState, stop: asyncio.Event, *, for_s: float | None) -> None:
-        """Run periods until `stop` is set or `for_s` seconds of periods are done, then hand the sections back."""
+    async def run(self, authority: Authority, stop: asyncio.Event, *, for_s: float | None, override: bool) -> None:
+        """Run periods until `stop` is set or `for_s` seconds of periods are done, then hand the sections back.
+
+        Args:
+            authority: how far to act; on a live site, and for `limited`, it is taken once the inputs were read.
+            stop: ends the run after the current period.
+            for_s: how long, None until stopped.
+            override: whether a person insists on full authority over a live site without a passed record.
+        """
         schedule, k = Schedule.aligned(self._clock, self._period_ns, LEAD_NS)
-        standing = first_standing(self._design, authority, k, ended_cleanly=self._journal.previous.ended_cleanly)
+        at_once = authority is Authority.FULL and self._site is SiteKind.BENCH
+        self._wanted = None if at_once or not authority.writes else (authority, override)
+        standing = first_standing(
+            self._design,
+            at_start(authority if at_once else Authority.OBSERVE),
+            k,
+            ended_cleanly=self._journal.previous.ended_cleanly,
+        )
         last_k = None if for_s is None else k + max(1, round(for_s / self._design.plant.period_s))
         self._garbage.start()
         try:
@@ -182,14 +197,16 @@ class Service:
         after, happened = await self._period.run(k, due_ns, orders.standing, orders.asks)
         for answer in settle(self._design.plant, orders, happened):
             self._answer(answer, k)
-        if orders.authority is not None:
-            before, now, who = orders.authority
-            self.tell(sentences.authority(before, now, who), k)
+        if orders.changed is not None:
+            changed, who = orders.changed
+            self.tell(sentences.authority(changed.before, changed.state.level, who), k)
         self._record(after, happened, wall_ns)
         self._garbage.between_periods()
         return after
 
     def _orders(self, standing: Standing) -> Orders:
+        if self._wanted is not None and np.isfinite(standing.last).all():
+            return self._take_over(standing, *self._wanted)
         if self._desk is None:
             return Orders(standing)
         taken = self._desk.take(self._clock.wall_ns())
@@ -198,7 +215,20 @@ class Service:
             self._tell(
                 sentences.request(outcome.request, outcome.who, outcome.words, outcome.state, outcome.reason), None
             )
-        return apply_requests(self._design.plant, self._site, standing, taken.asked)
+        return apply_requests(self._design, self._site, standing, taken.asked)
+
+    def _take_over(self, standing: Standing, to: Authority, override: bool) -> Orders:
+        """Take the authority this run was started with, now that the inputs are known; said when it is denied."""
+        self._wanted = None
+        decided = change_authority(self._design, self._site, standing, to, override=override)
+        if isinstance(decided, Denied):
+            self.tell(sentences.authority_denied(to, decided.sentence))
+            return Orders(standing)
+        everybody = range(len(self._design.plant.sections))
+        asks = {} if decided.ask is None else dict.fromkeys(everybody, (decided.ask,))
+        return Orders(
+            replace(standing, authority=decided.state), asks, changed=(decided, "the command that started it")
+        )
 
     def _answer(self, answer: Answer, k: int) -> None:
         asked: Asked = answer.asked

@@ -94,7 +94,7 @@ class InlineWorker:
     def __init__(self) -> None:
         self._slow = 0
 
-    async def solve(self, job: Job, stop_ns: int, due_ns: int) -> Solved | None:  # noqa: ARG002
+    async def solve(self, job: Job, stop_ns: int, due_ns: int) -> Solved | None:
         """Solve at once, whatever the instants; None when a slow solve was provoked."""
         if self._slow > 0:
             self._slow -= 1
