@@ -66,8 +66,9 @@ class DirectPlant:
     def catch_up(self) -> int:
         """Do every scan that is due; returns how many were done."""
         behind = (self._now_ns() - self._simulation.time_ns(self._state)) // self._simulation.step_ns
-        if self._longest_gap_ns is not None and behind * self._simulation.step_ns > self._longest_gap_ns:
-            gap_s = behind * self._simulation.step_ns / NS
+        gap_ns = behind * self._simulation.step_ns
+        if self._longest_gap_ns is not None and gap_ns > self._longest_gap_ns and behind > 1:
+            gap_s = gap_ns / NS
             of_plant(f"nobody moved the plant for {gap_s:.1f} s: its physics stood still meanwhile").log()
             self._state, behind = self._simulation.skip(self._state, behind - 1), 1
         for _ in range(behind):
