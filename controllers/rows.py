@@ -15,7 +15,7 @@ pushes the plant past it. Input and move limits should be hard: the plant cannot
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from enum import Enum
 from functools import cached_property
@@ -202,7 +202,7 @@ class RowTable:
         }
         return RowData(**{name: np.concatenate(parts).astype(float) for name, parts in per.items()})
 
-    def retarget(self, data: RowData, targets: dict[str, float]) -> RowData:
+    def retarget(self, data: RowData, targets: Mapping[str, float]) -> RowData:
         """Return `data` with other targets, in the quantities' own units."""
         target = data.target.copy()
         for name, value in targets.items():
@@ -210,7 +210,7 @@ class RowTable:
             target[rows] = value / self.span[rows]
         return replace(data, target=target)
 
-    def confine(self, data: RowData, limits: dict[str, tuple[npt.ArrayLike, npt.ArrayLike]]) -> RowData:
+    def confine(self, data: RowData, limits: Mapping[str, tuple[npt.ArrayLike, npt.ArrayLike]]) -> RowData:
         """Return `data` with other hard limits: per quantity a lower and an upper value, one number or one per step.
 
         Equal limits hold an input at a known value, and everybody plans around it: nothing is factorised again.

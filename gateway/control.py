@@ -22,6 +22,7 @@ from controllers import ControllerError
 from gateway import logs, sentences
 from gateway.authority import Authority, default_authority
 from gateway.clock import Clock, RealClock
+from gateway.deadline import DeadlineSummary
 from gateway.design import PlantDesign, build_design
 from gateway.exit_codes import ExitCode
 from gateway.journal import Alarm, Journal, RunEnd, RunStart, StorageError, new_run_id
@@ -80,7 +81,7 @@ class RunResult:
     code: ExitCode
     run: str
     tally: Tally
-    message: str = ""
+    deadlines: DeadlineSummary
 
 
 def run_control(options: RunOptions, *, clock: Clock | None = None) -> RunResult:
@@ -148,7 +149,7 @@ async def _run(options: RunOptions, design: PlantDesign, site: SiteSpec, clock: 
         how[0] = RunEnd.STOPPED if stop.is_set() else RunEnd.COMPLETED
         service.tell(sentences.run_ended(how[0], service.tally.periods, service.tally.missed))
         code = ExitCode.HELD if service.tally.held else ExitCode.DONE
-        return RunResult(code, run_id, service.tally)
+        return RunResult(code, run_id, service.tally, service.deadlines())
 
 
 def _opening_words(

@@ -24,7 +24,7 @@ import numpy as np
 from scipy import sparse
 
 from controllers import Design, Network, Noise, Observer, Of, Quantity, Settings
-from controllers.arrays import Floats
+from controllers.arrays import Floats, Ints
 from controllers.linearise import OperatingPoint, colour_columns, discretise, equilibrium, held_coupling_error, jacobian
 from gateway.plantfile.canonical import canonical
 from gateway.plantfile.plant import Plant, Role, Signal
@@ -107,6 +107,15 @@ def physics_of(plant: Plant) -> PhysicsNetwork:
     sections = [(spec.name, PHYSICS[spec.physics](**spec.parameters)) for spec in plant.sections]
     couplings = [(spec.one, spec.other, COUPLINGS[spec.kind](**spec.parameters)) for spec in plant.couplings]
     return PhysicsNetwork(sections, couplings)
+
+
+def operating_point_of(plant: Plant, physics: PhysicsNetwork) -> OperatingPoint:
+    """Where the plant rests with its outputs at their targets: all that a simulated plant needs of a design.
+
+    Raises:
+        EquilibriumError: there is no such point; the message says which equation is worst.
+    """
+    return _operating_point(physics, _Order.of(plant, physics))
 
 
 def build_design(plant: Plant) -> PlantDesign:
@@ -228,7 +237,7 @@ def _jacobians(physics: PhysicsNetwork, point: OperatingPoint) -> tuple[sparse.c
     )
 
 
-def _block_pattern(physics: PhysicsNetwork, at: Floats) -> sparse.csr_array:
+def _block_pattern(physics: PhysicsNetwork, at: Ints) -> sparse.csr_array:
     """Where dx/dt can depend on the columns `at`: a section on itself and on its neighbours."""
     size = len(physics.x_at) - 1
     touching = sparse.lil_array((size, size))
@@ -271,7 +280,7 @@ def _scaled_network(
     names = [spec.name for spec in plant.sections]
     into_x = sparse.diags_array(1 / x_unit)
 
-    def sizes(at: Floats) -> dict[str, int]:
+    def sizes(at: Ints) -> dict[str, int]:
         return dict(zip(names, (int(size) for size in np.diff(at)), strict=True))
 
     measured = dict.fromkeys(names, 0)

@@ -107,7 +107,7 @@ class Period:
         """
         design, period_ns = self._design, round(self._design.plant.period_s * 1e9)
         cut = Cutoff.of(due_ns, period_ns, design.plant.cutoffs)
-        watch = Stopwatch.start(self._clock, due_ns)
+        watch = Stopwatch.start(self._clock, cut)
 
         # Gather, admit
         gathered = await self._link.gather(cut.gather_ns)

@@ -22,6 +22,7 @@ from gateway.admit import first_memory
 from gateway.admit_rules import plan_admission
 from gateway.authority import Authority, AuthorityState, Denied, at_start
 from gateway.clock import NS, Clock, Schedule, WallStepWatch
+from gateway.deadline import DeadlineStatistics, DeadlineSummary
 from gateway.design import PlantDesign
 from gateway.hold import State, start
 from gateway.journal import Event, Journal, PeriodRecord
@@ -130,7 +131,14 @@ class Service:
         )
         self._told = Told({}, None)
         self._wanted: tuple[Authority, bool] | None = None
+        self._statistics = DeadlineStatistics(
+            [section.name for section in design.plant.sections], design.plant.period_s
+        )
         self.tally = Tally()
+
+    def deadlines(self) -> DeadlineSummary:
+        """Deadline statistics of the run so far."""
+        return self._statistics.summary()
 
     def tell(self, notice: Notice, k: int | None = None) -> None:
         """Log a notice and put it into the journal."""
@@ -248,6 +256,9 @@ class Service:
         if (interval := self._summary.add(after, happened)) is not None:
             self.tell(sentences.summary(interval), happened.k)
         names = [section.name for section in self._design.plant.sections]
+        states = [hold.state for hold in after.holds]
+        iterations = None if happened.plan is None else happened.plan.iterations
+        self._statistics.add(happened.timing, iterations, happened.verdicts, states)
         self.tally.periods += 1
         self.tally.missed += sum(verdict is not Verdict.ON_TIME for verdict in happened.verdicts)
         self.tally.held = tuple(
