@@ -23,6 +23,7 @@ from gateway.journal.records import (
     SectionRow,
     SignalRow,
     Timing,
+    whole,
 )
 
 Column = str | bytes | int | float | None
@@ -88,11 +89,7 @@ def period_of(row: Sequence[object]) -> PeriodRecord:
 
 
 def event_columns(event: Event) -> tuple[Column, ...]:
-    """Columns `EVENT` of an event.
-
-    Raises:
-        TypeError: `detail` holds what JSON does not know.
-    """
+    """Columns `EVENT` of an event."""
     return _columns(event, EVENT)
 
 
@@ -126,16 +123,28 @@ def _columns(record: msgspec.Struct, names: Sequence[str]) -> tuple[Column, ...]
 
 
 def _column(name: str, value: object) -> Column:
+    if name == "detail":
+        return _detail(value)
     if name in _json_decoders:
         return _json_encoder.encode(value).decode()
     if isinstance(value, float):  # numpy's float64 among them
         return float(value) if isfinite(value) else None
-    if value is None or isinstance(value, str | bytes | int):
+    if isinstance(value, str):
+        return whole(str(value))
+    if value is None or isinstance(value, bytes | int):
         return value
     plain = _plain(value)
     if isinstance(plain, str | bytes | int | float):
         return plain
     raise TypeError(f"{name} = {value!r} cannot be recorded: a column holds one number or one text")
+
+
+def _detail(value: object) -> str:
+    """Facts as JSON; an event is worth more than its facts, so those that cannot be written become text."""
+    try:
+        return _json_encoder.encode(value).decode()
+    except (TypeError, ValueError, OverflowError):
+        return _json_encoder.encode({"unrecordable": whole(repr(value))}).decode()
 
 
 def _record(record: type[Record], names: Sequence[str], row: Sequence[object]) -> Record:

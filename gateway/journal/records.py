@@ -270,6 +270,11 @@ NO_NUMBER = nan
 """What stands in `estimates`, `wanted` and `written` where there is no number."""
 
 
+def whole(text: str) -> str:
+    """The text without half characters (surrogates, as in odd file names), which neither JSON nor SQLite takes."""
+    return text.encode("utf-8", "replace").decode()
+
+
 def _recordable(value: object) -> Value:
     if value is None or isinstance(value, bool):
         return value
@@ -277,4 +282,4 @@ def _recordable(value: object) -> Value:
         return int(value) if value in _INT64 else repr(value)[:MAX_TEXT]
     if isinstance(value, float):
         return float(value)
-    return (value if isinstance(value, str) else repr(value))[:MAX_TEXT]
+    return whole(value if isinstance(value, str) else repr(value))[:MAX_TEXT]

@@ -6,11 +6,11 @@ from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from math import isfinite
 
+from gateway.authority import Authority
 from gateway.plantfile.mistakes import nearest
 from gateway.plantfile.plant import Plant, Signal
 
 ALL = "all"
-AUTHORITIES = ("observe", "limited", "full")
 
 MOST_NAMED = 8
 """Names spelled out in an error before the rest is only counted."""
@@ -36,9 +36,9 @@ class Rearm:
 
 @dataclass(frozen=True)
 class SetAuthority:
-    """Let the gateway act this far: "observe", "limited" or "full"."""
+    """Let the gateway act this far."""
 
-    authority: str
+    authority: Authority
 
 
 @dataclass(frozen=True)
@@ -101,9 +101,9 @@ def _sections(verb: str, rest: Sequence[str], plant: Plant) -> tuple[str, ...]:
 
 
 def _authority(rest: Sequence[str], plant: Plant) -> Request:
-    if len(rest) != 1 or rest[0] not in AUTHORITIES:
-        raise RequestError(_unknown(" ".join(rest), "authority", AUTHORITIES))
-    return SetAuthority(rest[0])
+    if len(rest) != 1 or rest[0] not in tuple(Authority):
+        raise RequestError(_unknown(" ".join(rest), "authority", Authority))
+    return SetAuthority(Authority(rest[0]))
 
 
 def _target(rest: Sequence[str], plant: Plant) -> Request:

@@ -113,6 +113,21 @@ def test_an_events_detail_comes_back_as_it_was(detail: dict[str, object]) -> Non
     assert codec.event_of((9, *codec.event_columns(event))) == event
 
 
+@pytest.mark.parametrize("fact", [object(), "half a character: \ud800"])
+def test_an_event_outlives_facts_that_cannot_be_written(fact: object) -> None:
+    """The sentence is kept, the facts become text."""
+    event = Event(wall_ns=1, kind="a", sentence="So.", detail={"fact": fact})
+    back = codec.event_of((1, *codec.event_columns(event)))
+    assert back.sentence == "So."
+    assert "fact" in str(back.detail["unrecordable"])
+
+
+def test_half_characters_are_replaced() -> None:
+    """A sentence with an odd file name in it is kept."""
+    event = Event(wall_ns=1, kind="a", sentence="No file \ud800.")
+    assert codec.event_of((1, *codec.event_columns(event))).sentence == "No file ?."
+
+
 def test_detail_does_not_depend_on_the_order_of_its_keys() -> None:
     """Equal facts give equal bytes."""
     one = Event(wall_ns=1, kind="a", sentence="b", detail={"x": 1, "y": 2})

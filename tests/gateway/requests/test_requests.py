@@ -12,6 +12,7 @@ from pathlib import Path
 import apsw
 import pytest
 
+from gateway.authority import Authority
 from gateway.clock import VirtualClock
 from gateway.journal import Outcome, StorageMissingError, StorageUnwritableError
 from gateway.journal.database import open_to_share, open_to_write
@@ -109,7 +110,7 @@ def test_control_learns_who_asked_what_and_when(bench: Bench) -> None:
     number = bench.post("authority limited")
     bench.desk.step()
     assert bench.desk.take(bench.clock.wall_ns()) == Taken(
-        asked=(Asked(number, asked_ns, WHO, "authority limited", SetAuthority("limited")),)
+        asked=(Asked(number, asked_ns, WHO, "authority limited", SetAuthority(Authority.LIMITED)),)
     )
 
 

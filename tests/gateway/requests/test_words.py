@@ -6,7 +6,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from gateway.requests import Hold, Rearm, Request, RequestError, SetAuthority, SetTarget, parse_request
+from gateway.authority import Authority
+from gateway.requests import Hold, Rearm, Rehearse, Request, RequestError, SetAuthority, SetTarget, parse_request
 from tests.gateway.requests.samples import PLANT
 
 
@@ -17,11 +18,12 @@ from tests.gateway.requests.samples import PLANT
         ("hold all", Hold(("tank-1", "tank-2"))),
         ("rearm tank-2", Rearm(("tank-2",))),
         ("rearm all", Rearm(("tank-1", "tank-2"))),
-        ("authority observe", SetAuthority("observe")),
-        ("authority limited", SetAuthority("limited")),
-        ("authority full", SetAuthority("full")),
+        ("authority observe", SetAuthority(Authority.OBSERVE)),
+        ("authority limited", SetAuthority(Authority.LIMITED)),
+        ("authority full", SetAuthority(Authority.FULL)),
         ("target tank-1.level 18.5", SetTarget("tank-1.level", 18.5)),
         ("target tank-1.level 18.5 cm", SetTarget("tank-1.level", 18.5)),
+        ("rehearse slow 3", Rehearse(3)),
         ("  hold   tank-1 ", Hold(("tank-1",))),
     ],
 )
@@ -34,8 +36,12 @@ def test_every_request_is_read(words: str, request_: Request) -> None:
 @pytest.mark.parametrize(
     ("words", "message"),
     [
+        ("rehearse fast 3", "rehearse wants “slow” and a number of periods from 1 to 100; got “fast 3”"),
+        ("rehearse slow 0", "got “slow 0”"),
+        ("rehearse slow 1e3", "got “slow 1e3”"),
+        ("rehearse", "got “nothing”"),
         ("", "nothing was asked; ask one of: hold SECTION"),
-        ("hlod tank-1", "“hlod” is no request; allowed: hold, rearm, authority, target; nearest: hold"),
+        ("hlod tank-1", "“hlod” is no request; allowed: hold, rearm, authority, target, rehearse; nearest: hold"),
         ("hold", "hold wants one section, or all; got 0 words"),
         ("hold tank-1 tank-2", "got 2 words"),
         ("hold tnak-1", "“tnak-1” is no section of Two Tanks; allowed: tank-1, tank-2, all; nearest: tank-1"),
@@ -74,7 +80,7 @@ def test_whatever_is_typed_is_a_request_or_a_request_error(words: str) -> None:
         parse_request(words, PLANT)
     except RequestError:
         return
-    assert words.split(maxsplit=1)[0] in ("hold", "rearm", "authority", "target")
+    assert words.split(maxsplit=1)[0] in ("hold", "rearm", "authority", "target", "rehearse")
 
 
 @given(st.floats(allow_nan=True, allow_infinity=True))
