@@ -6,7 +6,17 @@ from itertools import product
 
 import pytest
 
-from sim_plant.panel import Charge, DrivenPoint, LocalAction, PanelSettings
+from sim_plant.panel import (
+    Charge,
+    DrivenPoint,
+    LocalAction,
+    Outcome,
+    PanelSettings,
+    power_up,
+    readings,
+    tick,
+    write,
+)
 from sim_plant.panel.charge import TRANSITIONS, Cause
 
 POINT = DrivenPoint("tank-1.pump", "tank-1", 0.0, 100.0, 40.0)
@@ -71,3 +81,19 @@ def test_times_must_be_positive(watchdog_ms: int, window_ms: int) -> None:
     """A watchdog of nothing would trip at once, a window of nothing would refuse everything."""
     with pytest.raises(ValueError, match="must be above zero"):
         PanelSettings((POINT,), ("tank-1",), watchdog_ms, window_ms)
+
+
+def test_one_time_without_the_other() -> None:
+    """Either somebody supervises or nobody does."""
+    with pytest.raises(ValueError, match="give both or none"):
+        PanelSettings((POINT,), ("tank-1",), watchdog_ms=1000)
+
+
+def test_without_supervision_every_value_is_taken_at_once() -> None:
+    """Clamped to its span like any other, and nothing trips however long nobody writes."""
+    settings = PanelSettings((POINT,), ("tank-1",))
+    written = write(settings, power_up(settings), [("tank-1.pump", 130.0), ("panel.period", 1)], 10)
+    assert written.outcomes == (Outcome.TAKEN, Outcome.UNKNOWN)
+    later, events = tick(settings, written.state, 10_000_000)
+    assert readings(settings, later) == {"tank-1.pump": 100.0}
+    assert events == ()
