@@ -16,6 +16,7 @@ from hypothesis.stateful import RuleBasedStateMachine, invariant, rule
 from sim_plant.panel import PanelState, tick
 from tests.sim_plant.panel.bench import SETTINGS, Panel
 
+WINDOW_MS = 400
 INPUTS = st.one_of(st.floats(-20.0, 120.0), st.sampled_from([nan, inf, -inf, 50, True, None]))
 ENTRIES = st.one_of(
     st.tuples(st.sampled_from(["tank-1.pump", "tank-2.pump"]), INPUTS),
@@ -56,7 +57,7 @@ def can_be_justified(before: PanelState, request: Request, tag: str, command: fl
             and held_by_control(before, request[:end], section)
             and expires
             and isinstance(expires[-1], int)
-            and 0 <= expires[-1] - before.clock_ms <= SETTINGS.window_ms
+            and 0 <= expires[-1] - before.clock_ms <= WINDOW_MS
             and isinstance(period, int)
             and (before.restart or period > before.accepted)
             and values
