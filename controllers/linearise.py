@@ -133,6 +133,8 @@ def equilibrium(
         length = 1.0
         while length > 1e-4 and not _improves(residual, v - length * step, worst):
             length /= 2
+        if length <= 1e-4:  # no progress along the step: stay where the message means something
+            break
         v = v - length * step
     r = np.real(residual(v))
     k = int(np.where(np.isfinite(r), np.abs(r), np.inf).argmax())
