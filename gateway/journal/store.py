@@ -2,6 +2,9 @@
 
 Whatever SQLite says about the disk leaves as `apsw.Error`, with nothing of the batch written. A record that can never
 be written, whatever the disk does, is left out and named, so that it cannot block those behind it.
+
+A commit that was reported as failed may still be found on the disk when the file is opened again: its synchronisation
+failed, its pages did not. Writing the same period once more is therefore no error, and the same event may be told twice.
 """
 
 from __future__ import annotations
@@ -125,8 +128,19 @@ class Store:
             connection.execute(sql, (self._number, *columns))
         except (TypeError, ValueError, OverflowError, apsw.ConstraintError, apsw.TooBigError) as error:
             # A failed INSERT undoes itself alone (SQLite, "ON CONFLICT": ABORT); the transaction goes on.
-            return Unrecordable(record, error)
+            return None if self._there(connection, record) else Unrecordable(record, error)
         return None
+
+    def _there(self, connection: apsw.Connection, record: PeriodRecord | Note) -> bool:
+        """Whether this very period is recorded already."""
+        if not isinstance(record, PeriodRecord):
+            return False
+        try:
+            columns = codec.period_columns(record)
+            found = list(connection.execute(_FIND_PERIOD, (self._number, record.k)))
+        except (TypeError, ValueError, OverflowError):
+            return False
+        return found == [columns]
 
 
 def _insert(table: str, names: Sequence[str], verb: str = "INSERT") -> str:
@@ -134,6 +148,7 @@ def _insert(table: str, names: Sequence[str], verb: str = "INSERT") -> str:
 
 
 _PERIOD = _insert("periods", ("run", *codec.PERIOD))
+_FIND_PERIOD = f"SELECT {', '.join(codec.PERIOD)} FROM periods WHERE run = ? AND k = ?"
 _EVENT = _insert("events", ("run", *codec.EVENT))
 _OUTCOME = _insert("outcomes", ("run", *codec.OUTCOME))
 _LOSS = _insert("lost", ("run", *codec.LOSS))
