@@ -4,7 +4,7 @@ Whatever SQLite says about the disk leaves as `apsw.Error`, with nothing of the 
 be written, whatever the disk does, is left out and named, so that it cannot block those behind it.
 
 A commit that was reported as failed may still be found on the disk when the file is opened again: its synchronisation
-failed, its pages did not. Writing the same period once more is therefore no error, and the same event may be told twice.
+failed, its pages did not. Writing the same period again is therefore no error, and the same event may be told twice.
 """
 
 from __future__ import annotations
