@@ -200,6 +200,17 @@ def test_a_freeze_ends_with_the_first_change() -> None:
     assert (first(admission).quality, admission.blind) == (Quality.GOOD, frozenset())
 
 
+def test_a_level_may_have_moved_while_its_transmitter_was_frozen() -> None:
+    """Time is counted from the last true reading, not from the repeats that were believed."""
+    feed, rng = one_tank(), np.random.default_rng(1)
+    last = 0.0
+    for _ in range(200):
+        last = noisy(rng, 20.0)
+        feed(last)
+    assert first([feed(last) for _ in range(7)][-1]).quality is Quality.FROZEN
+    assert first(feed(last + 15.9)).quality is Quality.GOOD
+
+
 def test_an_undeclared_coarse_converter_raises_no_false_alarm() -> None:
     """The resolution is learned from the steps seen: readings in steps of σ, declared as continuous, never freeze."""
     feed, rng = one_tank(resolution=0.0), np.random.default_rng(3)
@@ -218,8 +229,8 @@ def test_the_same_sample_read_twice_is_no_repeat() -> None:
     feed = one_tank(resolution=0.0)
     for step, value in enumerate((20.0, 20.01, 20.0101)):
         feed(value, server_ns=step)
-    qualities = [first(feed(20.02, server_ns=10 + step // 2)).quality for step in range(4)]
-    assert qualities == [Quality.GOOD] * 4
+    qualities = [first(feed(20.02, server_ns=10 + step // 3)).quality for step in range(9)]
+    assert qualities == [Quality.GOOD] * 9
 
 
 def test_without_noise_a_still_signal_beside_a_moving_one_is_frozen() -> None:

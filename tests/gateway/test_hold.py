@@ -219,6 +219,13 @@ def test_releasing_authority_keeps_the_latch() -> None:
     assert transition.events == (Event.TAKE_LATCHED,)
 
 
+def test_clean_periods_watched_before_a_take_do_not_count() -> None:
+    """A latched section owes `clear_for` clean periods from the take on, its own period the first of them at most."""
+    section = run(start(100, taken=False, ended_cleanly=False), [Verdict.ON_TIME] * 50)
+    section, _, (refusal,) = advance(section, SPEC, 150, Verdict.ON_TIME, [Ask.TAKE, Ask.REARM])
+    assert (section.state, refusal.clean_periods_missing) == (H, SPEC.clear_for)
+
+
 def test_taking_authority_drives_from_the_next_period() -> None:
     """A take leaves the section frozen on the inputs found, and the next on-time period drives."""
     section = run(start(100, taken=False, ended_cleanly=True), [Verdict.ON_TIME] * 3)
