@@ -146,7 +146,10 @@ async def _run(options: RunOptions, design: PlantDesign, site: SiteSpec, clock: 
         stop = asyncio.Event()
         _stop_on_signals(stop)
         await service.run(authority, stop, for_s=options.for_s, override=options.override)
-        how[0] = RunEnd.STOPPED if stop.is_set() else RunEnd.COMPLETED
+        if service.tally.latched:
+            how[0] = RunEnd.HELD
+        else:
+            how[0] = RunEnd.STOPPED if stop.is_set() else RunEnd.COMPLETED
         service.tell(sentences.run_ended(how[0], service.tally.periods, service.tally.missed))
         code = ExitCode.HELD if service.tally.held else ExitCode.DONE
         return RunResult(code, run_id, service.tally, service.deadlines())

@@ -95,16 +95,21 @@ def run_ended(how: str, periods: int, missed: int) -> Notice:
     )
 
 
-_ENDS = {"completed": "is complete", "stopped": "was stopped", "failed": "failed"}
+_ENDS = {
+    "completed": "is complete",
+    "stopped": "was stopped",
+    "held": "ended with sections on hold, which the next one starts with,",
+    "failed": "failed",
+}
 
 
 def unclean_start(previous: str | None) -> Notice:
-    """The previous run has no orderly end, so every section starts held."""
+    """The previous run has no orderly end, or ended on hold, so every section starts held."""
     which = "An earlier run" if previous is None else f"Run {previous}"
     return Notice(
         Kind.UNCLEAN_START,
         Level.ERROR,
-        f"{which} did not end in order: every section comes up on hold. Look at the plant, then rearm.",
+        f"{which} did not end in order, or ended on hold: every section comes up on hold. Look at the plant, then rearm.",
         detail={"previous": previous},
     )
 
@@ -163,7 +168,7 @@ _CAUSES: Mapping[Ask | Start, str] = {
     Ask.TAKE: "the gateway took authority.",
     Ask.RELEASE: "the gateway released authority.",
     Start.CLEAN: "the run starts.",
-    Start.RESTART: "the previous run did not end in order.",
+    Start.RESTART: "the previous run did not end in order, or ended on hold.",
 }
 
 

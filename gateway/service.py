@@ -54,6 +54,7 @@ class Tally:
     missed: int = 0
     skipped: int = 0
     held: tuple[str, ...] = field(default_factory=tuple)
+    latched: bool = False
 
 
 def first_standing(design: PlantDesign, authority: AuthorityState, first_k: int, *, ended_cleanly: bool) -> Standing:
@@ -261,6 +262,7 @@ class Service:
         self._statistics.add(happened.timing, iterations, happened.verdicts, states)
         self.tally.periods += 1
         self.tally.missed += sum(verdict is not Verdict.ON_TIME for verdict in happened.verdicts)
+        self.tally.latched = any(hold.latched_by is not None for hold in after.holds)
         self.tally.held = tuple(
             name for name, hold in zip(names, after.holds, strict=True) if hold.state is State.HOLDING
         )

@@ -102,13 +102,15 @@ class RunEnd(StrEnum):
     """Its time was up, or its criteria were."""
     STOPPED = "stopped"
     """A person or the supervisor asked it to stop."""
+    HELD = "held"
+    """In order, but with sections latched on hold: no end of a run takes the place of a rearm."""
     FAILED = "failed"
     """Our fault: it shut down in order after an error."""
 
     @property
     def clean(self) -> bool:
         """Whether the next run may start as if nothing had happened."""
-        return self is not RunEnd.FAILED
+        return self not in (RunEnd.HELD, RunEnd.FAILED)
 
 
 class RunStart(msgspec.Struct, frozen=True, kw_only=True):
