@@ -42,7 +42,9 @@ def intended_paths(
         if intentions[i] in (Writes.SYNTHESIS, Writes.NOTHING):
             paths.append(InputPath(known, None, band))
             continue
-        ahead = path(signal, known, period_s, steps) if intentions[i] is Writes.SAFE_HOLD and in_charge[i] else None
+        ahead = (
+            path(signal, known, period_s, steps, band) if intentions[i] is Writes.SAFE_HOLD and in_charge[i] else None
+        )
         paths.append(InputPath(known, np.full(steps, known) if ahead is None else np.asarray(ahead), band))
     return paths
 
@@ -60,7 +62,13 @@ LEFT_ALONE = Outgoing({})
 
 
 def outgoing_of(
-    design: PlantDesign, i: int, action: Writes, wanted: Floats | None, last: Floats, view: PanelView
+    design: PlantDesign,
+    i: int,
+    action: Writes,
+    wanted: Floats | None,
+    last: Floats,
+    view: PanelView,
+    bands: Mapping[str, tuple[float, float]],
 ) -> Outgoing:
     """What section i sends: the synthesis' inputs, its last ones, its safe hold, or nothing.
 
@@ -69,6 +77,7 @@ def outgoing_of(
         wanted: inputs of the synthesis (m,), engineering units; None when there are none.
         last: what each input was told last (m,).
         view: the panel, this period.
+        bands: authority's band by tag, which a ramp keeps to as well.
     """
     if action is Writes.NOTHING or not view.permit:
         return LEFT_ALONE
@@ -78,7 +87,7 @@ def outgoing_of(
         if not view.in_charge[i]:
             return LEFT_ALONE  # The panel drives it already; only a rearm takes it back.
         told = {s.tag: float(last[k]) for s, k in zip(signals, places, strict=True) if isfinite(last[k])}
-        held = next_inputs(signals, told, design.plant.period_s)
+        held = next_inputs(signals, told, design.plant.period_s, bands)
         return Outgoing({}, hand_back=True) if held.hand_back else Outgoing(held.values)
     source = last if action is Writes.LAST_WRITTEN or wanted is None else wanted
     values = {s.tag: float(source[k]) for s, k in zip(signals, places, strict=True)}

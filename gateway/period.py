@@ -158,7 +158,7 @@ class Period:
         ]
         holds = self._advanced(standing.holds, k, verdicts, asks)
         parts = [
-            outgoing_of(design, i, writes(hold.state), guarded.values, last, view)
+            outgoing_of(design, i, writes(hold.state), guarded.values, last, view, bands)
             for i, (hold, _, _) in enumerate(holds)
         ]
         stopped = self._stopped(parts, last, bands)
