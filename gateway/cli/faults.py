@@ -68,7 +68,7 @@ def _our_fault(error: Exception) -> ExitCode:
     text = "".join(traceback.format_exception(error))
     stamp = time.strftime("%Y%m%dT%H%M%SZ", time.gmtime())
     kept = "it could not be kept anywhere, so here it is:\n" + text
-    for folder in (Path.cwd(), Path(tempfile.gettempdir())):
+    for folder in (Path(tempfile.gettempdir()), Path.cwd()):
         path = folder / f"lengthsman-fault-{stamp}.txt"
         try:
             path.write_text(text, encoding="utf-8")

@@ -10,8 +10,8 @@ import click
 
 from controllers import EquilibriumError
 from gateway import logs
-from gateway.cli.faults import CommandError
 from gateway.cli import options
+from gateway.cli.faults import CommandError
 from gateway.cli.options import plant_file_argument, plant_of, site_of
 from gateway.cli.serving import serve
 from gateway.clock import RealClock

@@ -8,8 +8,8 @@ from pathlib import Path
 
 import click
 
-from gateway.cli.faults import CommandError
 from gateway.cli import options
+from gateway.cli.faults import CommandError
 from gateway.cli.options import folder_of, plant_file_argument, plant_of, site_of
 from gateway.control import RunOptions, StartError, run_control
 from gateway.exit_codes import ExitCode
