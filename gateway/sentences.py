@@ -109,7 +109,8 @@ def unclean_start(previous: str | None) -> Notice:
     return Notice(
         Kind.UNCLEAN_START,
         Level.ERROR,
-        f"{which} did not end in order, or ended on hold: every section comes up on hold. Look at the plant, then rearm.",
+        f"{which} did not end in order, or ended on hold: every section comes up on hold. "
+        "Look at the plant, then rearm.",
         detail={"previous": previous},
     )
 
@@ -129,25 +130,50 @@ def insecure(endpoint: str) -> Notice:
 
 def transition(section: str, change: Transition, settings: HoldSpec, slack_us: int | None) -> Notice:
     """A section changed what its inputs do."""
-    slack = "" if slack_us is None else f" Slack {slack_us / 1e3:.1f} ms."
-    rearm = " It waits for a rearm." if change.after is State.HOLDING and change.before is not State.HOLDING else ""
     return Notice(
         Kind.TRANSITION,
         _transition_level(change),
-        f"{section} goes from {change.before} to {change.after}: {_cause(change)} "
-        f"{_count(change.misses, 'miss', 'misses')} in the last {settings.latch_window} periods.{slack}{rearm}",
+        f"{section} goes {_way(change, settings, slack_us)}{_waits(change, 'It waits')}",
         section=section,
-        detail={
-            "before": change.before,
-            "after": change.after,
-            "cause": change.cause,
-            "verdict": change.verdict,
-            "steps": list(change.events),
-            "misses": change.misses,
-            "window": settings.latch_window,
-            "slack_ms": None if slack_us is None else slack_us / 1e3,
-        },
+        detail=_transition_detail(change, settings, slack_us),
     )
+
+
+def transitions(sections: Sequence[str], change: Transition, settings: HoldSpec, slack_us: int | None) -> Notice:
+    """Several sections changed in the same way in one period: one line for one cause (alarm practice, IEC 62682)."""
+    named = ", ".join(sections)
+    return Notice(
+        Kind.TRANSITION,
+        _transition_level(change),
+        f"{_count(len(sections), 'section')} go {_way(change, settings, slack_us)}{_waits(change, 'They wait')} "
+        f"({named})",
+        detail={"sections": list(sections), **_transition_detail(change, settings, slack_us)},
+    )
+
+
+def _way(change: Transition, settings: HoldSpec, slack_us: int | None) -> str:
+    slack = "" if slack_us is None else f" Slack {slack_us / 1e3:.1f} ms."
+    return (
+        f"from {change.before} to {change.after}: {_cause(change)} "
+        f"{_count(change.misses, 'miss', 'misses')} in the last {settings.latch_window} periods.{slack}"
+    )
+
+
+def _waits(change: Transition, words: str) -> str:
+    return f" {words} for a rearm." if change.after is State.HOLDING and change.before is not State.HOLDING else ""
+
+
+def _transition_detail(change: Transition, settings: HoldSpec, slack_us: int | None) -> dict[str, object]:
+    return {
+        "before": change.before,
+        "after": change.after,
+        "cause": change.cause,
+        "verdict": change.verdict,
+        "steps": list(change.events),
+        "misses": change.misses,
+        "window": settings.latch_window,
+        "slack_ms": None if slack_us is None else slack_us / 1e3,
+    }
 
 
 def _transition_level(change: Transition) -> Level:

@@ -35,7 +35,7 @@ from gateway.sentences import Notice
 from gateway.signals import Tag
 from gateway.standing import Standing
 from gateway.tags import in_charge_tag
-from gateway.telling import Told, layout_of, notices_of, record_of
+from gateway.telling import Told, layout_of, notices_of, record_of, transition_events, transition_lines
 from gateway.upkeep import GarbageKeeper, IntervalSummary
 from gateway.verdict import Verdict
 from gateway.worker import Worker
@@ -252,6 +252,10 @@ class Service:
         notices, self._told = notices_of(self._design, self._told, happened)
         for notice in notices:
             self.tell(notice, happened.k)
+        for notice in transition_lines(self._design, happened):
+            self._tell(notice, happened.k)
+        for notice in transition_events(self._design, happened):
+            self._journal.put_event(Event.of(notice, self._clock.wall_ns(), happened.k))
         if step_ns := self._wall.step_ns():
             self.tell(sentences.clock_stepped(step_ns), happened.k)
         if (interval := self._summary.add(after, happened)) is not None:

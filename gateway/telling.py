@@ -14,6 +14,7 @@ import numpy as np
 
 from gateway import sentences
 from gateway.design import PlantDesign
+from gateway.hold import Transition
 from gateway.journal import Layout, PeriodRecord, SectionRow, SignalRow, Timing
 from gateway.panel_view import PanelView
 from gateway.period import Happened
@@ -104,7 +105,7 @@ class Told:
 
 
 def notices_of(design: PlantDesign, told: Told, happened: Happened) -> tuple[list[Notice], Told]:
-    """Sentences of one period, and what is known to have been said after them."""
+    """Sentences of one period besides its transitions, and what is known to have been said after them."""
     qualities = {one.tag: one.quality for one in happened.admission.signals}
     out = list(_panel_notices(told.view, happened.view, severed=not happened.gathered.readings))
     if happened.refused_set:
@@ -112,10 +113,31 @@ def notices_of(design: PlantDesign, told: Told, happened: Happened) -> tuple[lis
     if happened.unknown:
         out.append(sentences.write_unknown(happened.unknown, happened.k, "no answer before the cut-off"))
     out += _quality_notices(design, told.qualities, qualities, happened)
-    names = [section.name for section in design.plant.sections]
-    for i, change in happened.transitions.items():
-        out.append(sentences.transition(names[i], change, design.plant.hold, happened.timing.slack_us))
     return out, Told(qualities, happened.view if happened.gathered.complete else told.view)
+
+
+def transition_events(design: PlantDesign, happened: Happened) -> list[Notice]:
+    """One notice per section that changed its state, for the journal."""
+    names = [section.name for section in design.plant.sections]
+    return [
+        sentences.transition(names[i], change, design.plant.hold, happened.timing.slack_us)
+        for i, change in happened.transitions.items()
+    ]
+
+
+def transition_lines(design: PlantDesign, happened: Happened) -> list[Notice]:
+    """One notice per way in which sections changed their states, for the log: one cause, one line."""
+    names = [section.name for section in design.plant.sections]
+    ways: dict[Transition, list[str]] = {}
+    for i, change in happened.transitions.items():
+        ways.setdefault(change, []).append(names[i])
+    settings, slack_us = design.plant.hold, happened.timing.slack_us
+    return [
+        sentences.transition(alike[0], change, settings, slack_us)
+        if len(alike) == 1
+        else sentences.transitions(alike, change, settings, slack_us)
+        for change, alike in ways.items()
+    ]
 
 
 def _panel_notices(before: PanelView | None, now: PanelView, *, severed: bool) -> Iterator[Notice]:
