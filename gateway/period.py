@@ -234,7 +234,7 @@ class Period:
         going = {tag: value for part in parts for tag, value in part.values.items()}
         values = np.array([going.get(signal.tag, np.nan) for signal in self._design.inputs])
         refused = self._guard.check(values, last, bands).refused
-        return refused & np.array([bool(part.values) for part in parts])
+        return np.logical_and(refused, [bool(part.values) for part in parts])
 
     @staticmethod
     def _set_refused(standing: Standing, view: PanelView) -> Bools:

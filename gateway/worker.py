@@ -73,8 +73,9 @@ class ThreadWorker:
         future = asyncio.get_running_loop().run_in_executor(self._pool, work)
         self._busy = future
         alarm = asyncio.ensure_future(clock.sleep_until(due_ns))
+        race: set[asyncio.Future[Solved] | asyncio.Future[None]] = {future, alarm}
         try:
-            await asyncio.wait({future, alarm}, return_when=asyncio.FIRST_COMPLETED)
+            await asyncio.wait(race, return_when=asyncio.FIRST_COMPLETED)
         finally:
             alarm.cancel()
         return future.result() if future.done() else None

@@ -77,6 +77,4 @@ class DirectLink:
     def statistics(self) -> LinkStatistics:
         """Counters so far."""
         state = LinkState.DOWN if self.cut else LinkState.UP
-        return LinkStatistics(
-            state, 1, 0, self._reads, self._read_failures, self._writes, self._write_failures, ""
-        )
+        return LinkStatistics(state, 1, 0, self._reads, self._read_failures, self._writes, self._write_failures, "")
