@@ -46,10 +46,9 @@ async def act(
 
 
 async def _one(step: Step, provoke: Callable[[str], Awaitable[str]], ask: Callable[[str], Awaitable[Answer]]) -> Done:
-    answers = []
+    answers: list[str] = []
     try:
-        for line in step.provoke:
-            answers.append(await provoke(line))
+        answers.extend([await provoke(line) for line in step.provoke])
         if step.ask:
             answer = await ask(step.ask)
             reason = f": {answer.reason}" if answer.reason else ""

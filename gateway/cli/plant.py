@@ -30,7 +30,10 @@ from gateway.simulated import simulated_plant
 )
 @click.option("--away", type=click.FloatRange(-40, 40), default=0.0, help="Start this far off the targets, % of span.")
 @click.option("--quiet", is_flag=True, help="Say nothing but where it listens, and what is wrong.")
-def command(file: Path, site: str | None, endpoint: str | None, away: float, quiet: bool) -> ExitCode:
+@click.option("--until-eof", is_flag=True, help="Stop when standard input ends: for whoever starts it as a child.")
+def command(
+    file: Path, site: str | None, endpoint: str | None, away: float, *, quiet: bool, until_eof: bool
+) -> ExitCode:
     """Serve the simulated plant of FILE over OPC UA, in real time, until it is stopped.
 
     Takes lines on standard input that make it misbehave, such as “freeze tank-4.level for 20 s”; each is answered in
@@ -45,7 +48,7 @@ def command(file: Path, site: str | None, endpoint: str | None, away: float, qui
     clock = RealClock()
     log = logs.start(sys.stderr, clock.wall_ns, level="warning" if quiet else "info")
     try:
-        asyncio.run(serve(spec, where, clock))
+        asyncio.run(serve(spec, where, clock, until_eof=until_eof))
     finally:
         log.close()
     return ExitCode.DONE

@@ -10,6 +10,7 @@ from collections.abc import Callable
 
 import click
 
+from gateway.bench.children import LISTENING
 from gateway.cli.faults import CommandError
 from gateway.clock import Clock
 from gateway.plantfile.plant import SiteSpec
@@ -19,14 +20,17 @@ from sim_plant.faults import FaultError, FaultKind
 from sim_plant.servers.opcua import LONGEST_GAP_S, OpcUaPlant
 from sim_plant.spec import SimulatedPlantSpec
 
-LISTENING = "listening "
-"""What the line on standard output begins with that says where the plant is served; the endpoint follows."""
-
 MOST_READ_BYTES = 4096
 
 
-async def serve(spec: SimulatedPlantSpec, site: SiteSpec, clock: Clock) -> None:
+async def serve(spec: SimulatedPlantSpec, site: SiteSpec, clock: Clock, *, until_eof: bool = False) -> None:
     """Simulate and serve a plant until SIGINT or SIGTERM; says on standard output where, once clients may come.
+
+    Args:
+        spec: what to simulate.
+        site: where to serve it.
+        clock: the injected clock.
+        until_eof: stop at the end of standard input, too.
 
     Raises:
         CommandError: the site's addresses cannot be simulated, or its endpoint cannot be listened at.
@@ -47,7 +51,7 @@ async def serve(spec: SimulatedPlantSpec, site: SiteSpec, clock: Clock) -> None:
             f"{site.endpoint} cannot be listened at: {os.strerror(error.errno or 0)}; stop what listens there, "
             "or give another --endpoint (port 0 takes a free one)"
         ) from error
-    typed = Lines(_standard_input(), lambda line: answer(plant, line))
+    typed = Lines(_standard_input(), lambda line: answer(plant, line), stop.set if until_eof else lambda: None)
     try:
         click.echo(f"{LISTENING}{server.endpoint}")
         async with asyncio.TaskGroup() as group:
@@ -73,13 +77,18 @@ def answer(plant: DirectPlant, line: str) -> str:
 class Lines:
     """Lines typed on a file descriptor, each answered on standard output, on the event loop.
 
-    A descriptor that cannot be waited for (an ordinary file, none at all) is not read; the end of the input ends the
-    reading, not the plant.
+    A descriptor that cannot be waited for (an ordinary file, none at all) is not read.
+
+    Args:
+        descriptor: where they are typed, None for nowhere.
+        answer_to: makes the answer to one line.
+        at_end: told of the end of the input.
     """
 
-    def __init__(self, descriptor: int | None, answer_to: Callable[[str], str]) -> None:
+    def __init__(self, descriptor: int | None, answer_to: Callable[[str], str], at_end: Callable[[], None]) -> None:
         self._descriptor = descriptor
         self._answer_to = answer_to
+        self._at_end = at_end
         self._rest = b""
         self._reading = False
 
@@ -103,6 +112,7 @@ class Lines:
         read = os.read(descriptor, MOST_READ_BYTES)
         if not read:
             self.stop()
+            self._at_end()
             return
         *lines, self._rest = (self._rest + read).split(b"\n")
         for line in lines:
