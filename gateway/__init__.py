@@ -14,9 +14,11 @@ The rooms; none imports from a line below its own:
     journal, requests                                       what is remembered, and what is asked
     links                                                   one file per protocol
     tags, design, simulated                                 a plant file made into addresses, numerics, and its twin
-    panel_view, estimating, period_rows, inputs, judging    phases of a period, without I/O
+    standing, panel_view                                    what a period starts from
+    estimating, period_rows, inputs, judging                phases of a period, without I/O
+    deciding, delivering                                    what goes out, and what came of it
     worker, deadline                                        where the synthesis runs, and by when
-    standing, period                                        one period: state in, state out
+    period                                                  one period: state in, state out
     orders, telling, upkeep                                 around a period: requests, records, housekeeping
     service, control                                        one run: start, supervise, stop
     bench, cli                                              commands

@@ -1,4 +1,4 @@
-"""From the hold states to the inputs: what each is known to do before the synthesis, and what goes out after it."""
+"""From the hold states to the inputs: what each is known to do before the synthesis, and what it is told after it."""
 
 from __future__ import annotations
 
@@ -8,15 +8,12 @@ from math import isfinite
 
 import numpy as np
 
-from controllers.arrays import Bools, Floats
+from controllers.arrays import Floats
 from gateway.design import PlantDesign
 from gateway.hold import Writes
 from gateway.panel_view import PanelView
 from gateway.period_rows import InputPath
-from gateway.plantfile.plant import Role
 from gateway.safe_hold import next_inputs, path
-from gateway.signals import Tag
-from gateway.tags import in_charge_tag, panel_tag
 
 
 def intended_paths(
@@ -94,43 +91,3 @@ def outgoing_of(
     if action is Writes.LAST_WRITTEN and not all(isfinite(value) for value in values.values()):
         return LEFT_ALONE
     return Outgoing(values, take=not view.in_charge[i])
-
-
-def compose_set(
-    design: PlantDesign,
-    tags: Mapping[str, Tag],
-    parts: Sequence[Outgoing],
-    view: PanelView,
-    k: int,
-    heartbeat: int,
-) -> tuple[list[tuple[Tag, float | int | bool]], Bools]:
-    """Order one set of inputs as the panel wants it: charge, values, expiry, then the counter that commits it.
-
-    The heartbeat goes last, with or without inputs: it says that this period was completed. Without a readable panel
-    clock no input is sent, since nobody could tell how long it stays valid.
-
-    Returns:
-        What to write in this order, and per section whether it has values in the set.
-    """
-    panel = design.plant.panel
-    names = [section.name for section in design.plant.sections]
-    sends = np.array([bool(part.values) for part in parts]) & (view.clock_ms is not None)
-    out: list[tuple[Tag, float | int | bool]] = []
-    for i, part in enumerate(parts):
-        if panel is not None and (part.hand_back or (part.take and sends[i])):
-            out.append((tags[in_charge_tag(names[i])], not part.hand_back))
-    for i, part in enumerate(parts):
-        if sends[i]:
-            out.extend((tags[tag], value) for tag, value in part.values.items())
-    if panel is None:
-        return out, sends
-    if sends.any() and view.clock_ms is not None:
-        out.append((tags[panel_tag("expires")], view.clock_ms + round(panel.window_s * 1e3)))
-        out.append((tags[panel_tag("period")], k))
-    out.append((tags[panel_tag("heartbeat")], heartbeat))
-    return out, sends
-
-
-def unmeasured_sections(design: PlantDesign) -> Bools:
-    """(N,) sections that measure nothing: they can be severed, never blind."""
-    return np.array([not section.signals_of(Role.MEASURED) for section in design.plant.sections])

@@ -45,6 +45,7 @@ class Kind(StrEnum):
     PERMIT = "permit"
     SET_REFUSED = "set_refused"
     SKIPPED = "skipped"
+    SYNTHESIS = "synthesis"
     SUMMARY = "summary"
     CLOCK = "clock"
     TASK_DIED = "task_died"
@@ -145,8 +146,8 @@ def transitions(sections: Sequence[str], change: Transition, settings: HoldSpec,
     return Notice(
         Kind.TRANSITION,
         _transition_level(change),
-        f"{_count(len(sections), 'section')} go {_way(change, settings, slack_us)}{_waits(change, 'They wait')} "
-        f"({named})",
+        f"{_count(len(sections), 'section')} ({named}) go {_way(change, settings, slack_us)}"
+        f"{_waits(change, 'They wait')}",
         detail={"sections": list(sections), **_transition_detail(change, settings, slack_us)},
     )
 
@@ -395,6 +396,16 @@ def clock_stepped(step_ns: int) -> Notice:
         Level.WARNING,
         f"The wall clock was stepped by {step_ns / 1e6:+.0f} ms. Periods keep to the monotonic clock.",
         detail={"step_ms": step_ns / 1e6},
+    )
+
+
+def synthesis_broken(why: str) -> Notice:
+    """The synthesis refused to run or broke down; every section is frozen for the period."""
+    return Notice(
+        Kind.SYNTHESIS,
+        Level.ERROR,
+        f"The synthesis broke down: {_full_stop(why)} Its inputs were thrown away.",
+        detail={"why": why},
     )
 
 

@@ -108,6 +108,8 @@ def notices_of(design: PlantDesign, told: Told, happened: Happened) -> tuple[lis
     """Sentences of one period besides its transitions, and what is known to have been said after them."""
     qualities = {one.tag: one.quality for one in happened.admission.signals}
     out = list(_panel_notices(told.view, happened.view, severed=not happened.gathered.readings))
+    if happened.broken:
+        out.append(sentences.synthesis_broken(happened.broken))
     if happened.refused_set:
         out.append(sentences.set_refused(happened.k - 1, happened.refused_set))
     if happened.unknown:

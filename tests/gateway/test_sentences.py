@@ -57,6 +57,13 @@ ALL = (
     sentences.summary(BUSY),
     sentences.summary(IDLE),
     sentences.skipped(40, 2),
+    sentences.synthesis_broken("state of section 'tank-1' is nan"),
+    sentences.transitions(
+        ["tank-1", "tank-2"],
+        Transition(7, State.DRIVING, State.FROZEN, (Event.MISS,), Verdict.LATE, Verdict.LATE, 1),
+        HoldSpec(),
+        None,
+    ),
     sentences.clock_stepped(-3_600_000_000_000),
     sentences.task_died("gather", "ZeroDivisionError: our fault"),
     sentences.journal_failing("FullError: database or disk is full"),
