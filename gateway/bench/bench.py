@@ -249,7 +249,7 @@ class Bench:
             self._stage.say([Line(self._now_s(), Source.STORY, f"The story cannot be told: {error}", True)])
 
     def _begins(self, step: Step) -> None:
-        self._stage.say([Line(step.at_s, Source.STORY, f"{step.name}: {step.sentence}")])
+        self._stage.say([Line(step.at_s, Source.STORY, step.sentence)])
 
     def _bench_says(self, text: str) -> None:
         self._stage.say([Line(self._now_s(), Source.BENCH, text)])
@@ -275,6 +275,7 @@ class Bench:
             length_s=options.for_s,
             steps=options.planned,
             lines=self._stage.lines,
+            where=str(options.files.folder),
         )
 
     def _result(self) -> BenchResult | None:

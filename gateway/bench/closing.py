@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import json
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import asdict
@@ -20,6 +21,7 @@ from gateway.plantfile.plant import Plant
 
 GOOD, BAD, QUIET = "", "bold yellow", "bright_black"
 NOTHING = "–"
+PAGE_WIDTH = 200
 
 
 def exit_code_of(figures: Figures, criteria: Sequence[Criterion]) -> ExitCode:
@@ -51,12 +53,12 @@ def as_json(figures: Figures, criteria: Sequence[Criterion], code: ExitCode, wro
     return json.dumps(_plain(facts), allow_nan=False)
 
 
-def print_words(console: Console, words: RenderableType) -> None:
-    """Print the summary; off a terminal lines are never cut to a width."""
-    if console.is_terminal:
-        console.print(words)
-    else:
-        console.print(words, width=200, crop=False)
+def words_in_lines(words: RenderableType) -> str:
+    """The summary as plain text whose lines are as long as they need to be."""
+    page = Console(file=io.StringIO(), width=PAGE_WIDTH, color_system=None)
+    with page.capture() as capture:
+        page.print(words)
+    return "\n".join(line.rstrip() for line in capture.get().splitlines())
 
 
 def _sections(figures: Figures) -> Table:
@@ -79,10 +81,18 @@ def _row(section: SectionFigures) -> list[Text]:
         Text(f"{section.state.upper()} !" if held else str(section.state), style=BAD if held else GOOD),
         Text(_number(section.value, f".2f {section.unit}")),
         Text(_number(section.target, f".2f {section.unit}")),
-        Text(_number(section.mean_error_percent, "+.3f %")),
+        Text(_number(section.mean_error_percent, "+z.3f %")),
         Text(_counts(section.states.items())),
-        Text(_counts(section.misses.items()) or "none", style=BAD if section.unprovoked else GOOD),
+        Text(_missed(section), style=BAD if section.unprovoked else GOOD),
     ]
+
+
+def _missed(section: SectionFigures) -> str:
+    """Misses by verdict, and how many of them nothing explains."""
+    if not section.misses:
+        return "none"
+    unprovoked = f"{section.unprovoked} of them unprovoked !" if section.unprovoked else "all provoked"
+    return f"{_counts(section.misses.items())}; {unprovoked}"
 
 
 def _number(value: float, form: str) -> str:

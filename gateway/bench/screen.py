@@ -27,7 +27,10 @@ from gateway.plantfile.plant import Plant, Role, SectionSpec, Signal
 WELL, BRIGHT, PERSON = "bright_black", "bold", "bold yellow"
 MARKS = {State.DRIVING: " ", State.FROZEN: "~", State.HOLDING: "!", State.WATCHING: "-"}
 LATEST = 5
-HEAD_ROWS = 11 + LATEST
+DOING_WIDTH = 14
+"""Cells for the state and what was missed, so that the scales stay where they are."""
+
+HEAD_ROWS = 12 + LATEST
 """Rows the view needs besides its sections."""
 
 
@@ -44,6 +47,7 @@ class Scene:
         length_s: of the whole run.
         steps: of the story, in order.
         lines: what was said last, oldest first.
+        where: folder to give to `lengthsman ask --at`, empty when there is nobody to ask.
     """
 
     plant: Plant
@@ -54,6 +58,7 @@ class Scene:
     length_s: float
     steps: Sequence[Step]
     lines: Sequence[Line]
+    where: str = ""
 
 
 def picture(scene: Scene, glyphs: Glyphs, width: int, height: int) -> RenderableType:
@@ -64,6 +69,7 @@ def picture(scene: Scene, glyphs: Glyphs, width: int, height: int) -> Renderable
         parts += [Text(), _sections(scene, last, glyphs, width, max(3, height - HEAD_ROWS)), Text()]
         parts.append(_work(scene, glyphs, width))
         parts.append(_misses(scene))
+        parts += _waiting(scene, last)
     parts += [Text(), *(_line(line) for line in scene.lines[-LATEST:])]
     return Group(*parts)
 
@@ -92,10 +98,12 @@ def _story(scene: Scene) -> list[RenderableType]:
 
 def _sections(scene: Scene, last: PeriodRecord, glyphs: Glyphs, width: int, rows: int) -> RenderableType:
     table = Table.grid(padding=(0, 2, 0, 0))
+    table.add_column()
+    table.add_column(min_width=DOING_WIDTH)
     order = list(range(len(scene.plant.sections)))
     if len(order) > rows:
         order = sorted(sorted(order, key=lambda i: _urgency(scene, last, i))[: rows - 1])
-    cells = max(12, min(40, width - 66))
+    cells = max(13, min(41, width - 69)) | 1  # odd, so that a target in the middle of the span has a cell of its own
     for i in order:
         table.add_row(*_section(scene, scene.plant.sections[i], last.sections[i], glyphs, cells))
     hidden = [last.sections[i].state for i in range(len(last.sections)) if i not in set(order)]
@@ -136,7 +144,7 @@ def _numbers(
     if reading is None:
         return [Text(f"{row.measured[place].quality}", style=BRIGHT), Text()]
     shown = Text(f"{reading:8.2f} {signal.unit}", style=style)
-    off = "" if target is None else f"{100 * (reading - target) / signal.width:+6.1f} %"
+    off = "" if target is None else f"{100 * (reading - target) / signal.width:+z6.1f} %"
     return [shown, Text(off, style=style)]
 
 
@@ -177,6 +185,17 @@ def _misses(scene: Scene) -> Text:
     ]
     text = ", ".join(missed[:8]) + (f" and {len(missed) - 8} more" if len(missed) > 8 else "")
     return Text(f"missed periods: {text or 'none'}", style=WELL, no_wrap=True, overflow="ellipsis")
+
+
+def _waiting(scene: Scene, last: PeriodRecord) -> list[RenderableType]:
+    """Who waits for a rearm, and how it is given."""
+    rows = zip(scene.plant.sections, last.sections, strict=True)
+    held = [spec.name for spec, row in rows if row.state is State.HOLDING]
+    if not held or not scene.where:
+        return []
+    whom = held[0] if len(held) == 1 else "all"
+    text = f"! {', '.join(held[:4])} waits for a person: lengthsman ask --at {scene.where} rearm {whom}"
+    return [Text(text, style=PERSON, no_wrap=True, overflow="ellipsis")]
 
 
 def _line(line: Line) -> Text:

@@ -12,7 +12,7 @@ from rich.console import Console
 
 from gateway.bench.bench import Bench, BenchFiles, BenchOptions, BenchResult
 from gateway.bench.children import ChildEndedError
-from gateway.bench.closing import as_json, closing_words, exit_code_of, print_words
+from gateway.bench.closing import as_json, closing_words, exit_code_of, words_in_lines
 from gateway.bench.story import Times, story_of
 from gateway.cli import options
 from gateway.cli.faults import CommandError
@@ -86,7 +86,11 @@ def _close(result: BenchResult, bench: BenchOptions, console: Console, *, json_w
     if json_wanted:
         click.echo(text)
     else:
-        print_words(console, closing_words(bench.plant, result.figures, result.criteria))
+        words = closing_words(bench.plant, result.figures, result.criteria)
+        if console.is_terminal:
+            console.print(words)
+        else:
+            click.echo(words_in_lines(words))
         console.print()
         for name, path in wrote.items():
             console.print(f"{name:<14} {path}", soft_wrap=True, highlight=False)
