@@ -101,7 +101,7 @@ def test_its_consumers(plant: Plant) -> None:
 def test_its_settings(plant: Plant) -> None:
     """Controller, cut-offs, hold, panel and bench."""
     assert plant.controller == ControllerSpec(horizon=20, locality=2)
-    assert (plant.cutoffs, plant.hold) == (Cutoffs(), HoldSpec(blind_after=1))
+    assert (plant.cutoffs, plant.hold) == (Cutoffs(), HoldSpec(latch_after=4, blind_after=1))
     assert (plant.panel, plant.bench) == (PanelSpec(2.0, 0.5), BenchSpec(1, 0.05))
 
 
