@@ -20,8 +20,8 @@ def project(
 ) -> None:  # pragma: no cover
     """out = G source,  G = sum_i S_i' N_i N_i' S_i.
 
-    Rows are taken as views of one block, so that the compiler sees plain unit-stride loops and vectorises both: indexing
-    the flat basis instead costs four times as much.
+    Rows are taken as views of one block, so that the compiler sees plain unit-stride loops and vectorises both;
+    indexing the flat basis instead costs four times as much.
     """
     out[:] = 0.0
     coefficients = np.empty(freedom.max())
