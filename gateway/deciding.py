@@ -15,8 +15,10 @@ from controllers.arrays import Bools, Floats
 from gateway.design import PlantDesign
 from gateway.hold import Ask, Refusal, SectionHold, Transition, advance, writes
 from gateway.inputs import LEFT_ALONE, Outgoing, outgoing_of
+from gateway.judging import not_told
 from gateway.panel_view import PanelView
 from gateway.saturate import Guard
+from gateway.standing import Standing
 from gateway.verdict import Verdict, first_cause
 
 
@@ -70,7 +72,7 @@ def decide(
     wanted: Floats,
     last: Floats,
     view: PanelView,
-    bands: Mapping[str, tuple[float, float]],
+    standing: Standing,
 ) -> Decision:
     """Let the guard look at the synthesis' inputs, then at whatever the hold states make of them.
 
@@ -78,14 +80,27 @@ def decide(
         judged: verdicts up to the synthesis.
         wanted: its inputs (m,), engineering units, NaN where there are none.
         last: what each input was told last (m,).
-        bands: authority's band by tag.
+        view: the panel, this period.
+        standing: before this period.
     """
-    design = accounting.design
+    design, bands = accounting.design, standing.authority.bands()
+    unheard = not_told(standing, view)
     checked = guard.check(wanted, last, bands)
     decision = accounting.account(worsened(judged, checked.refused, Verdict.REFUSED))
     parts = tuple(
-        outgoing_of(design, i, writes(hold.state), checked.values, last, view, bands)
-        for i, hold in enumerate(decision.holds)
+        outgoing_of(
+            design,
+            i,
+            writes(hold.state),
+            checked.values,
+            last,
+            view,
+            bands,
+            clean=not verdict.is_miss,
+            ours=bool(standing.charge_expected[i]),
+            not_told=bool(unheard[i]),
+        )
+        for i, (hold, verdict) in enumerate(zip(decision.holds, decision.verdicts, strict=True))
     )
     stopped = _stopped(design, guard, parts, last, bands)
     if stopped.any():

@@ -13,6 +13,7 @@ from gateway.inputs import Outgoing
 from gateway.links.protocol import WriteOutcome
 from gateway.panel_view import PanelView
 from gateway.signals import Tag
+from gateway.standing import SentSet
 from gateway.tags import in_charge_tag, panel_tag
 
 Written = float | int | bool
@@ -36,7 +37,8 @@ def compose_set(
 ) -> OutgoingSet:
     """Order one set of inputs as the panel wants it: charge, values, expiry, then the counter that commits it.
 
-    The heartbeat goes last, with or without inputs: it says that this period was completed. Without a readable panel
+    The heartbeat goes last, with or without inputs: it says that this period was completed. It is withheld while the
+    panel believes somebody drives a section that is only watched: its watchdog shall find out. Without a readable panel
     clock no input is sent, since nobody could tell how long it stays valid.
     """
     panel = design.plant.panel
@@ -54,7 +56,8 @@ def compose_set(
     if sends.any() and view.clock_ms is not None:
         out.append((tags[panel_tag("expires")], view.clock_ms + round(panel.window_s * 1e3)))
         out.append((tags[panel_tag("period")], k))
-    out.append((tags[panel_tag("heartbeat")], heartbeat))
+    if not any(part.abandoned for part in parts):
+        out.append((tags[panel_tag("heartbeat")], heartbeat))
     return OutgoingSet(tuple(out), sends)
 
 
@@ -66,13 +69,15 @@ class Delivery:
         lost: per section (N,), inputs that should have been written and were not, or nobody knows.
         written: inputs acknowledged (m,), engineering units, NaN where none were.
         charge_expected: per section (N,), whether the panel must show it in our charge next period: taken now, or ours
-            already and not handed back.
+            already and not handed back for certain.
+        sent: the set, None when it did not leave this process.
         unknown: tags whose write was not answered.
     """
 
     lost: Bools
     written: Floats
     charge_expected: Bools
+    sent: SentSet | None
     unknown: tuple[str, ...]
 
     @classmethod
@@ -83,24 +88,30 @@ class Delivery:
         outgoing: OutgoingSet,
         outcomes: Mapping[str, WriteOutcome],
         view: PanelView,
+        k: int,
     ) -> Delivery:
         """Read the outcomes of a write."""
 
         def arrived(tag: str) -> bool:
             return outcomes.get(tag) is WriteOutcome.WRITTEN
 
-        committed = design.plant.panel is None or (arrived(panel_tag("expires")) and arrived(panel_tag("period")))
         names = [section.name for section in design.plant.sections]
+        commit = () if design.plant.panel is None else (panel_tag("expires"), panel_tag("period"))
         lost = np.array(
             [
-                bool(part.values) and not (outgoing.sends[i] and committed and all(map(arrived, part.values)))
+                bool(part.values) and not (outgoing.sends[i] and all(map(arrived, (*part.values, *commit))))
                 for i, part in enumerate(parts)
             ]
         )
+        doubtful = [any(outcomes.get(tag) is WriteOutcome.UNKNOWN for tag in (*part.values, *commit)) for part in parts]
+        left = outgoing.sends.any() and all(outcomes.get(tag) is not WriteOutcome.NOT_SENT for tag in commit)
         taken = [
             bool(outgoing.sends[i]) and part.take and arrived(in_charge_tag(names[i])) for i, part in enumerate(parts)
         ]
-        kept = [view.in_charge[i] and not part.hand_back for i, part in enumerate(parts)]
+        kept = [
+            view.in_charge[i] and not (part.hand_back and arrived(in_charge_tag(names[i])))
+            for i, part in enumerate(parts)
+        ]
         sent = {tag.name: value for tag, value in outgoing.values}
         good = outgoing.sends & ~lost
         return cls(
@@ -112,5 +123,6 @@ class Delivery:
                 ]
             ),
             charge_expected=np.array(taken) | np.array(kept),
+            sent=SentSet(k, outgoing.sends, lost & ~np.array(doubtful)) if left else None,
             unknown=tuple(tag for tag, outcome in outcomes.items() if outcome is WriteOutcome.UNKNOWN),
         )

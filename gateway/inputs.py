@@ -48,14 +48,25 @@ def intended_paths(
 
 @dataclass(frozen=True)
 class Outgoing:
-    """One section's part of a set: its values by tag, and whether to take it, leave it, or hand it back."""
+    """One section's part of a set.
+
+    Attributes:
+        values: its inputs by tag, engineering units.
+        take: whether to take the section from the panel with them.
+        hand_back: whether to hand it back.
+        abandoned: the panel shows it in control's charge, but this run never took it and only watches: whoever drove
+            it is gone, and the panel must not be told otherwise.
+    """
 
     values: Mapping[str, float]
     take: bool = False
     hand_back: bool = False
+    abandoned: bool = False
 
 
 LEFT_ALONE = Outgoing({})
+HANDED_BACK = Outgoing({}, hand_back=True)
+ABANDONED = Outgoing({}, abandoned=True)
 
 
 def outgoing_of(
@@ -66,8 +77,15 @@ def outgoing_of(
     last: Floats,
     view: PanelView,
     bands: Mapping[str, tuple[float, float]],
+    *,
+    clean: bool,
+    ours: bool,
+    not_told: bool,
 ) -> Outgoing:
     """What section i sends: the synthesis' inputs, its last ones, its safe hold, or nothing.
+
+    A section that the panel drives is taken in a clean period only. One on hold stays with the panel until a rearm,
+    and goes back to it when its hold does not reach the actuators. One that is watched goes back if we had it.
 
     Args:
         action: by its hold state.
@@ -75,19 +93,29 @@ def outgoing_of(
         last: what each input was told last (m,).
         view: the panel, this period.
         bands: authority's band by tag, which a ramp keeps to as well.
+        clean: whether its period was on time so far.
+        ours: whether this run took the section and did not hand it back.
+        not_told: whether its last inputs have certainly not reached the actuators.
     """
-    if action is Writes.NOTHING or not view.permit:
+    if action is Writes.NOTHING:
+        return _watched(in_charge=view.in_charge[i] and design.plant.panel is not None, ours=ours)
+    if not view.permit or (not view.in_charge[i] and (action is Writes.SAFE_HOLD or not clean)):
         return LEFT_ALONE
     places = [k for k, section in enumerate(design.section_of_input) if section == i]
     signals = [design.inputs[k] for k in places]
     if action is Writes.SAFE_HOLD:
-        if not view.in_charge[i]:
-            return LEFT_ALONE  # The panel drives it already; only a rearm takes it back.
         told = {s.tag: float(last[k]) for s, k in zip(signals, places, strict=True) if isfinite(last[k])}
         held = next_inputs(signals, told, design.plant.period_s, bands)
-        return Outgoing({}, hand_back=True) if held.hand_back else Outgoing(held.values)
+        return HANDED_BACK if held.hand_back or not_told else Outgoing(held.values)
     source = last if action is Writes.LAST_WRITTEN or wanted is None else wanted
     values = {s.tag: float(source[k]) for s, k in zip(signals, places, strict=True)}
     if action is Writes.LAST_WRITTEN and not all(isfinite(value) for value in values.values()):
         return LEFT_ALONE
     return Outgoing(values, take=not view.in_charge[i])
+
+
+def _watched(*, in_charge: bool, ours: bool) -> Outgoing:
+    """What a section that is only watched sends: nothing, but its charge goes back to the panel."""
+    if not in_charge:
+        return LEFT_ALONE
+    return HANDED_BACK if ours else ABANDONED

@@ -21,19 +21,19 @@ from gateway.admit import Admission, AdmitMemory, admit
 from gateway.admit_rules import plan_admission
 from gateway.clock import NS, Clock
 from gateway.deadline import Cutoff, Stopwatch
-from gateway.deciding import Accounting, decide, worsened
+from gateway.deciding import Accounting, Decision, decide, worsened
 from gateway.delivering import Delivery, compose_set
 from gateway.design import PlantDesign
 from gateway.estimating import Seen, estimate_period
-from gateway.hold import Ask, Refusal, SectionHold, Transition, Writes, advance, may_drive, writes
+from gateway.hold import Ask, Refusal, Transition, writes
 from gateway.inputs import intended_paths
-from gateway.judging import judge, set_not_taken
+from gateway.judging import foresee, judge, set_not_taken
 from gateway.links.protocol import Gathered, Link
 from gateway.panel_view import PanelView, view_panel
 from gateway.period_rows import period_rows
 from gateway.saturate import Guard
 from gateway.signals import Tag
-from gateway.standing import SentSet, Standing
+from gateway.standing import Standing
 from gateway.verdict import Verdict
 from gateway.worker import Job, Solved, Worker
 
@@ -129,7 +129,7 @@ class Period:
             standing: what the last period left.
             asks: per section, what was asked of it, in order.
         """
-        design, bands = self._design, standing.authority.bands()
+        design = self._design
         cut = Cutoff.of(due_ns, self._period_ns, design.plant.cutoffs)
         watch = Stopwatch.start(self._clock, cut)
 
@@ -142,24 +142,25 @@ class Period:
         estimate, innovation = self._estimate(standing, found)
         watch.lap("estimate")
 
-        # Synthesise
-        solved, broken = await self._synthesise(k, standing, asks, found, estimate, cut)
+        # Synthesise, around whoever misses this period for certain
+        not_taken = set_not_taken(design, standing, found.view)
+        blind = found.admission.blind if found.ready else self._everybody
+        foreseen = foresee(design, gathered, found.view, standing.charge_expected, blind, not_taken)
+        accounting = Accounting(design, k, standing.holds, asks)
+        solved, broken = await self._synthesise(standing, accounting.account(foreseen), found, estimate, cut)
         plan = None if solved is None else solved[0]
         wanted = np.full(len(design.inputs), np.nan) if plan is None else design.scaling.u_back(plan.inputs)
         watch.lap("synthesise")
 
         # Judge, saturate
-        accounting = Accounting(design, k, standing.holds, asks)
-        not_taken = set_not_taken(standing, found.view)
-        blind = found.admission.blind if found.ready else self._everybody
-        judged = judge(design, gathered, found.view, standing.charge_expected, blind, plan, broken, not_taken)
-        decision = decide(accounting, self._guard, judged, wanted, found.last, found.view, bands)
+        judged = judge(design, foreseen, plan, broken)
+        decision = decide(accounting, self._guard, judged, wanted, found.last, found.view, standing)
 
         # Write
         heartbeat = (standing.heartbeat + 1) % 2**32
         outgoing = compose_set(design, self._tags, decision.parts, found.view, k, heartbeat)
         outcomes = await self._link.write(outgoing.values, cut.write_ns) if outgoing.values else {}
-        delivery = Delivery.of(design, decision.parts, outgoing, outcomes, found.view)
+        delivery = Delivery.of(design, decision.parts, outgoing, outcomes, found.view, k)
         if delivery.lost.any():
             decision = accounting.account(worsened(decision.verdicts, delivery.lost, Verdict.UNWRITTEN))
         watch.acknowledged()
@@ -174,7 +175,7 @@ class Period:
             last=np.where(np.isfinite(delivery.written), delivery.written, found.last),
             known=found.seen.known,
             charge_expected=delivery.charge_expected,
-            sent=SentSet(k, outgoing.sends) if outgoing.sends.any() else None,
+            sent=delivery.sent,
             heartbeat=heartbeat,
         )
         happened = Happened(
@@ -190,7 +191,7 @@ class Period:
             verdicts=decision.verdicts,
             transitions=decision.transitions,
             refusals=decision.refusals,
-            refused_set=(found.view.refusal or "it shows another counter") if not_taken.any() else "",
+            refused_set=self._refusal(standing, found.view),
             unknown=delivery.unknown,
             timing=watch,
         )
@@ -212,9 +213,8 @@ class Period:
 
     async def _synthesise(
         self,
-        k: int,
         standing: Standing,
-        asks: Mapping[int, Sequence[Ask]],
+        intended: Decision,
         found: _Found,
         estimate: Estimate | None,
         cut: Cutoff,
@@ -223,7 +223,7 @@ class Period:
         if estimate is None:
             return None, ""
         design = self._design
-        intentions = [self._intention(hold, k, asks.get(i, ())) for i, hold in enumerate(standing.holds)]
+        intentions = [writes(hold.state) for hold in intended.holds]
         paths = intended_paths(design, intentions, found.view.in_charge, found.last, standing.authority.bands())
         job = Job(
             design.synthesis,
@@ -236,9 +236,9 @@ class Period:
         except ControllerError as error:
             return None, str(error)
 
-    def _intention(self, hold: SectionHold, k: int, asks: Sequence[Ask]) -> Writes:
-        """What a section will write if this period turns out on time."""
-        settings = self._design.plant.hold
-        if may_drive(hold, settings, k, asks):
-            return Writes.SYNTHESIS
-        return writes(advance(hold, settings, k, Verdict.ON_TIME, asks)[0].state)
+    @staticmethod
+    def _refusal(standing: Standing, view: PanelView) -> str:
+        """The panel's words about the last set if it did not take it, empty otherwise and when nobody can tell."""
+        if standing.sent is None or view.accepted is None or view.accepted == standing.sent.k:
+            return ""
+        return view.refusal or "it shows another counter"

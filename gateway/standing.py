@@ -23,7 +23,7 @@ class Standing:
         admission: what the judging of readings remembers.
         blind: names of the sections that were blind.
         estimate: of the last period, None before the first.
-        iterate: of the last solve that came in time, None before the first.
+        iterate: of the last period's solve, None when it did not come in time.
         last: per input (m,), what it was told last, engineering units; NaN before it was ever read.
         known: measured disturbances of the last period (r,), scaled.
         charge_expected: per section (N,), whether the panel should show it in our charge.
@@ -47,7 +47,14 @@ class Standing:
 
 @dataclass(frozen=True)
 class SentSet:
-    """One set of inputs that went out: its counter, and per section (N,) whether it had values in it."""
+    """One set of inputs that went out.
+
+    Attributes:
+        k: its counter.
+        sections: per section (N,), whether it had values in it.
+        refused: per section (N,), whether these were answered, and not taken.
+    """
 
     k: int
     sections: Bools
+    refused: Bools
