@@ -1,9 +1,8 @@
-"""What a bench shows when it is over: a table per section, the deadlines, the criteria; or the same as JSON."""
+"""What a bench shows when it is over: a table per section, the deadlines, the criteria; or the same as data."""
 
 from __future__ import annotations
 
 import io
-import json
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import asdict
 from math import isfinite
@@ -40,9 +39,11 @@ def closing_words(plant: Plant, figures: Figures, criteria: Sequence[Criterion])
     return Group(Text(), Text(head), _sections(figures), Text(), _deadlines(plant, figures), Text(), _judged(criteria))
 
 
-def as_json(figures: Figures, criteria: Sequence[Criterion], code: ExitCode, wrote: Mapping[str, str]) -> str:
-    """The same facts as one JSON object; what is no number is null."""
-    facts = {
+def facts_of(
+    figures: Figures, criteria: Sequence[Criterion], code: ExitCode, wrote: Mapping[str, str]
+) -> dict[str, object]:
+    """The same as data, for JSON."""
+    return {
         **asdict(figures),
         "unprovoked": figures.unprovoked,
         "held": figures.held,
@@ -50,7 +51,6 @@ def as_json(figures: Figures, criteria: Sequence[Criterion], code: ExitCode, wro
         "wrote": dict(wrote),
         "exit": int(code),
     }
-    return json.dumps(_plain(facts), allow_nan=False)
 
 
 def words_in_lines(words: RenderableType) -> str:
@@ -130,14 +130,3 @@ def _judged(criteria: Sequence[Criterion]) -> Table:
         verdict = Text("yes", style=GOOD) if criterion.passed else Text("NO !", style=BAD)
         table.add_row(verdict, criterion.name, Text(criterion.found, style=QUIET))
     return table
-
-
-def _plain(value: object) -> object:
-    """JSON types only."""
-    if isinstance(value, float):
-        return value if isfinite(value) else None
-    if isinstance(value, Mapping):
-        return {str(key): _plain(item) for key, item in value.items()}
-    if isinstance(value, list | tuple):
-        return [_plain(item) for item in value]
-    return value

@@ -30,7 +30,7 @@ LATEST = 5
 DOING_WIDTH = 14
 """Cells for the state and what was missed, so that the scales stay where they are."""
 
-HEAD_ROWS = 12 + LATEST
+HEAD_ROWS = 11 + LATEST
 """Rows the view needs besides its sections."""
 
 

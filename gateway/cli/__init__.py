@@ -2,8 +2,12 @@
 
     commands    what there is; a command's file is imported when it is called, so that `--help` is quick
     faults      every way a command can fail, as one message and one exit code
+    facts       facts as JSON
     options     types of options that several commands share
-    voice       how commands speak: rich on a terminal, plain lines off it
+    desks       which running gateway a request goes to
+
+What a command needs beside its words stands in files named after it: `serving` (plant), `examination`, `optimum`,
+`forecast` and `dialling` (check), and the package `gateway.bench`.
 
 `main` is the console script. It never lets a traceback out: what is the caller's to mend is said in one message that
 names the place, the value and the fix; what is our fault is one sentence and the path of a file with the traceback.

@@ -12,9 +12,10 @@ from rich.console import Console
 
 from gateway.bench.bench import Bench, BenchFiles, BenchOptions, BenchResult
 from gateway.bench.children import ChildEndedError
-from gateway.bench.closing import as_json, closing_words, exit_code_of, words_in_lines
+from gateway.bench.closing import closing_words, exit_code_of, facts_of, words_in_lines
 from gateway.bench.story import Times, story_of
 from gateway.cli import options
+from gateway.cli.facts import json_text
 from gateway.cli.faults import CommandError
 from gateway.cli.options import folder_of, plant_file_argument, plant_of, site_of
 from gateway.clock import RealClock
@@ -77,7 +78,7 @@ def _close(result: BenchResult, bench: BenchOptions, console: Console, *, json_w
         "gateway's log": str(bench.files.gateway_log),
         "plant's log": str(bench.files.plant_log),
     }
-    text = as_json(result.figures, result.criteria, code, wrote)
+    text = json_text(facts_of(result.figures, result.criteria, code, wrote))
     try:
         bench.files.summary.write_text(text + "\n", encoding="utf-8")
     except OSError as error:

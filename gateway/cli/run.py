@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-import json
 from dataclasses import asdict
 from pathlib import Path
 
 import click
 
 from gateway.cli import options
+from gateway.cli.facts import json_text
 from gateway.cli.faults import CommandError
 from gateway.cli.options import folder_of, plant_file_argument, plant_of, site_of
 from gateway.control import RunOptions, StartError, run_control
@@ -43,7 +43,7 @@ CAUTIONS = (
     help="Stop after this time, such as 20min; runs until stopped without.",
 )
 @click.option("--endpoint", type=options.endpoint, metavar="URL", help="Overrides the site's endpoint.")
-@click.option("--json", "as_json", is_flag=True, help="Print how the run went as one JSON object.")
+@click.option("--json", "json_wanted", is_flag=True, help="Print how the run went as one JSON object.")
 def command(
     file: Path,
     site: str,
@@ -52,7 +52,8 @@ def command(
     requests: Path | None,
     for_s: float | None,
     endpoint: str | None,
-    as_json: bool,
+    *,
+    json_wanted: bool,
 ) -> ExitCode:
     """Drive the plant of FILE on one of its sites, one sampling period after the other.
 
@@ -79,8 +80,8 @@ def command(
     except StartError as error:
         raise CommandError(str(error), error.code) from error
     facts = {"run": result.run, "journal": str(journal), "exit": int(result.code), **asdict(result.tally)}
-    if as_json:
-        click.echo(json.dumps(facts))
+    if json_wanted:
+        click.echo(json_text(facts))
     else:
         held = f" On hold: {', '.join(result.tally.held)}." if result.tally.held else ""
         click.echo(
