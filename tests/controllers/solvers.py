@@ -44,7 +44,7 @@ def clarabel_solver(program: Program) -> Floats:
     rows = sparse.csr_array(program.k)
     settings = clarabel.DefaultSettings()
     settings.verbose = False
-    settings.tol_gap_abs = settings.tol_gap_rel = settings.tol_feas = 1e-12
+    settings.tol_gap_abs = settings.tol_gap_rel = settings.tol_feas = 1e-13
     solution = clarabel.DefaultSolver(
         sparse.csc_matrix(sparse.triu(program.p)),
         program.g,

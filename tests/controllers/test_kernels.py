@@ -7,7 +7,7 @@ from hypothesis import strategies as st
 from controllers import kernels
 from controllers.arrays import Floats, Ints
 from controllers.rows import row_rule
-from tests.controllers.test_rows import random_rows
+from tests.controllers.random_rows import random_rows
 
 Contributions = list[tuple[Ints, Floats]]
 
