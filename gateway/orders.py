@@ -71,7 +71,7 @@ def apply_requests(design: PlantDesign, site: SiteKind, standing: Standing, aske
                 ask = Ask.HOLD if isinstance(one.request, Hold) else Ask.REARM
                 places = tuple(index[name] for name in sections)
                 for i in places:
-                    asks.setdefault(i, []).append(ask)
+                    _append(asks.setdefault(i, []), ask)
                 pending.append((one, places, ask))
             case SetTarget(tag, value):
                 standing = replace(standing, targets={**standing.targets, tag: value})
@@ -85,7 +85,7 @@ def apply_requests(design: PlantDesign, site: SiteKind, standing: Standing, aske
                 changed = (decided, one.who)
                 if decided.ask is not None:
                     for i in range(len(plant.sections)):
-                        asks.setdefault(i, []).append(decided.ask)
+                        _append(asks.setdefault(i, []), decided.ask)
                 answers.append(Answer(one, RequestState.APPLIED))
             case Rehearse(periods):
                 if site is not SiteKind.BENCH:
@@ -94,6 +94,12 @@ def apply_requests(design: PlantDesign, site: SiteKind, standing: Standing, aske
                 slow = periods
                 answers.append(Answer(one, RequestState.APPLIED))
     return Orders(standing, asks, tuple(answers), tuple(pending), slow, changed)
+
+
+def _append(asks: list[Ask], ask: Ask) -> None:
+    """Two people who ask the same in one period share one ask, so that neither is refused for the other's sake."""
+    if not asks or asks[-1] is not ask:
+        asks.append(ask)
 
 
 def settle(plant: Plant, orders: Orders, happened: Happened) -> tuple[Answer, ...]:

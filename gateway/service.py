@@ -30,7 +30,7 @@ from gateway.links.protocol import Link
 from gateway.orders import Answer, Orders, apply_requests, change_authority, settle
 from gateway.period import Happened, Period
 from gateway.plantfile.plant import SiteKind
-from gateway.requests import Asked, RequestDesk
+from gateway.requests import Asked, RequestDesk, SetAuthority
 from gateway.sentences import Notice
 from gateway.signals import Tag
 from gateway.standing import Standing
@@ -221,9 +221,9 @@ class Service:
         taken = self._desk.take(self._clock.wall_ns())
         for outcome in taken.refused:
             self._journal.put_outcome(outcome)
-            self._tell(
-                sentences.request(outcome.request, outcome.who, outcome.words, outcome.state, outcome.reason), None
-            )
+            self.tell(sentences.request(outcome.request, outcome.who, outcome.words, outcome.state, outcome.reason))
+        if any(isinstance(one.request, SetAuthority) for one in taken.asked):
+            self._wanted = None  # A person's word about authority is newer than the command that started the run.
         return apply_requests(self._design, self._site, standing, taken.asked)
 
     def _take_over(self, standing: Standing, to: Authority, override: bool) -> Orders:

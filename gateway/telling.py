@@ -114,6 +114,8 @@ def notices_of(design: PlantDesign, told: Told, happened: Happened) -> tuple[lis
         out.append(sentences.set_refused(happened.k - 1, happened.refused_set))
     if happened.unknown:
         out.append(sentences.write_unknown(happened.unknown, happened.k, "no answer before the cut-off"))
+    if all(quality is Quality.MISSING for quality in qualities.values()):
+        return out, told  # The whole link is gone: told once, by the link. What is back as it was needs no sentence.
     out += _quality_notices(design, told.qualities, qualities, happened)
     return out, Told(qualities, happened.view if happened.gathered.complete else told.view)
 
@@ -154,9 +156,7 @@ def _panel_notices(before: PanelView | None, now: PanelView, *, severed: bool) -
 def _quality_notices(
     design: PlantDesign, before: dict[str, Quality], now: dict[str, Quality], happened: Happened
 ) -> Sequence[Notice]:
-    """One per signal whose quality changed; none at all when the whole link is gone, since that is told once."""
-    if all(quality is Quality.MISSING for quality in now.values()):
-        return ()
+    """One per signal whose quality changed."""
     tags = {signal.tag: signal for section in design.plant.sections for signal in section.signals}
     return [
         sentences.quality(
