@@ -13,7 +13,7 @@ from __future__ import annotations
 
 import asyncio
 import signal
-from collections.abc import Coroutine
+from collections.abc import Coroutine, Mapping
 from contextlib import AsyncExitStack
 from dataclasses import dataclass
 from pathlib import Path
@@ -36,6 +36,7 @@ from gateway.exit_codes import ExitCode
 from gateway.journal import Event, JournalReader
 from gateway.plantfile.plant import Plant, SiteSpec
 from gateway.requests import Answer, ask, whoami
+from gateway.sentences import Kind
 
 LISTENING_WITHIN_S = 60.0
 FIRST_PERIOD_WITHIN_S = 180.0
@@ -44,6 +45,10 @@ FIRST_PERIOD_WITHIN_S = 180.0
 AWAY_PERCENT = 10.0
 
 T = TypeVar("T")
+
+
+AUTHORITY_IN: Mapping[str, str] = {Kind.RUN_STARTED: "authority", Kind.AUTHORITY: "after"}
+"""Which fact of which event says how far the gateway may act."""
 
 
 @dataclass(frozen=True)
@@ -259,7 +264,8 @@ class Bench:
         self._followed = follow(reader, self._followed)
         self._untold += self._followed.events
         for event in self._followed.events:
-            self._authority = str(event.detail.get("authority", event.detail.get("after", self._authority)))
+            if event.kind in AUTHORITY_IN:
+                self._authority = str(event.detail.get(AUTHORITY_IN[event.kind], self._authority))
         if self._followed.first_ns is not None:
             self._stage.say(lines_of(self._untold, self._followed.first_ns, len(self._options.plant.sections)))
             self._untold = ()
