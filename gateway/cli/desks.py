@@ -44,7 +44,8 @@ def requests_file(at: Path | None, runs: Path = RUNS) -> Path:
     found = {path: taker for pattern in PATTERNS for path in runs.glob(pattern) if (taker := _taker(path))}
     if not found:
         raise CommandError(
-            f"no running gateway was found below {runs.absolute()}; start one, or say with --at where it keeps its journal",
+            f"no running gateway was found below {runs.absolute()}; "
+            "start one, or say with --at where it keeps its journal",
             ExitCode.UNREACHABLE,
         )
     if len(found) > 1:
