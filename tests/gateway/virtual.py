@@ -66,6 +66,12 @@ class Sent:
             name.removesuffix(".in_charge"): bool(value) for name, value in self.values if name.endswith(".in_charge")
         }
 
+    def counter(self, name: str) -> int:
+        """One of the counters control writes to the panel."""
+        value = dict(self.values)[f"panel.{name}"]
+        assert isinstance(value, int)
+        return value
+
 
 class Tap:
     """A direct link with somebody listening.
@@ -161,8 +167,8 @@ class Rig:
     ) -> None:
         self.design = design
         self.site = site
-        self.clock = VirtualClock(seed) if on is None else on.clock
-        self.plant = new_plant(design, self.clock) if on is None else on.plant
+        self.clock: VirtualClock = VirtualClock(seed) if on is None else on.clock
+        self.plant: DirectPlant = new_plant(design, self.clock) if on is None else on.plant
         tags = tags_of(design.plant, design.plant.sites["bench"])
         self.link = Tap(self.plant, tags, self.clock)
         self.worker = worker or InlineWorker()
