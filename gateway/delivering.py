@@ -109,7 +109,7 @@ class Delivery:
             bool(outgoing.sends[i]) and part.take and arrived(in_charge_tag(names[i])) for i, part in enumerate(parts)
         ]
         kept = [
-            view.in_charge[i] and not (part.hand_back and arrived(in_charge_tag(names[i])))
+            view.in_charge[i] and not part.abandoned and not (part.hand_back and arrived(in_charge_tag(names[i])))
             for i, part in enumerate(parts)
         ]
         sent = {tag.name: value for tag, value in outgoing.values}
