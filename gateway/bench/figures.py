@@ -21,7 +21,7 @@ from gateway.bench.following import targets_after
 from gateway.bench.story import Step, excused
 from gateway.deadline import LARGE_IS_BAD_PERCENTS, SMALL_IS_BAD_PERCENTS, Quantiles
 from gateway.hold import State
-from gateway.journal import JournalReader, Outcome, PeriodRecord, RunRecord
+from gateway.journal import JournalReader, Outcome, PeriodRecord, RunEnd, RunRecord
 from gateway.plantfile.plant import Plant, Role, SectionSpec, Signal
 from gateway.verdict import Verdict
 
@@ -142,7 +142,7 @@ def figures_of(
         slack_us=_quantiles(slack, SMALL_IS_BAD_PERCENTS, worst_percent=0.0),
         out_of_limits=out,
         lost=sum(loss.count for loss in reader.losses(run.id)),
-        ended=run.how is not None and run.how.clean,
+        ended=run.how not in (None, RunEnd.FAILED),
     )
 
 

@@ -43,6 +43,11 @@ CAUTIONS = (
     help="Stop after this time, such as 20min; runs until stopped without.",
 )
 @click.option("--endpoint", type=options.endpoint, metavar="URL", help="Overrides the site's endpoint.")
+@click.option(
+    "--without-record",
+    is_flag=True,
+    help="Full authority over a live site though this plant file has no passed soak record; said, and recorded.",
+)
 @click.option("--json", "json_wanted", is_flag=True, help="Print how the run went as one JSON object.")
 def command(
     file: Path,
@@ -53,6 +58,7 @@ def command(
     for_s: float | None,
     endpoint: str | None,
     *,
+    without_record: bool,
     json_wanted: bool,
 ) -> ExitCode:
     """Drive the plant of FILE on one of its sites, one sampling period after the other.
@@ -75,17 +81,24 @@ def command(
                 authority=authority,
                 for_s=for_s,
                 endpoint=endpoint,
+                override=without_record,
             )
         )
     except StartError as error:
         raise CommandError(str(error), error.code) from error
-    facts = {"run": result.run, "journal": str(journal), "exit": int(result.code), **asdict(result.tally)}
     if json_wanted:
+        tally, deadlines = asdict(result.tally), asdict(result.deadlines)
+        facts = {"run": result.run, "journal": str(journal), **tally, "deadlines": deadlines, "exit": int(result.code)}
         click.echo(json_text(facts))
-    else:
-        held = f" On hold: {', '.join(result.tally.held)}." if result.tally.held else ""
-        click.echo(
-            f"Run {result.run}: {result.tally.periods} periods, {result.tally.missed} section-periods missed, "
-            f"{result.tally.skipped} periods skipped.{held} Journal: {journal}"
-        )
+        return result.code
+    tally_words = (
+        f"Run {result.run}: {result.tally.periods} periods, {result.tally.missed} section-periods missed, "
+        f"{result.tally.skipped} periods skipped."
+    )
+    held = f" On hold: {', '.join(result.tally.held)}." if result.tally.held else ""
+    slack = result.deadlines.quantiles.get("slack_us")
+    slack_words = (
+        "" if slack is None else f" Slack {slack.median / 1e3:.1f} ms median, {slack.worst / 1e3:.1f} ms least."
+    )
+    click.echo(f"{tally_words}{slack_words}{held} Journal: {journal}")
     return result.code
