@@ -28,9 +28,9 @@ prepare() {
         "$python" -m venv "$venv" || fail "could not make $venv; is the folder writable?"
     }
     printf 'Installing what %s pins ...\n' "$lock" >&2
-    "$venv/bin/python" -m pip install --quiet --disable-pip-version-check --require-hashes -r "$root/deploy/$lock" ||
+    "$venv/bin/python" -m pip install -qq --disable-pip-version-check --require-hashes -r "$root/deploy/$lock" ||
         fail "pip could not install what deploy/$lock names; see its message above"
-    "$venv/bin/python" -m pip install --quiet --disable-pip-version-check --no-deps --no-build-isolation -e "$root" ||
+    "$venv/bin/python" -m pip install -qq --disable-pip-version-check --no-deps --no-build-isolation -e "$root" ||
         fail "pip could not install the project itself; see its message above"
     printf '%s' "$wanted" >"$stamp"
 }
