@@ -68,6 +68,7 @@ class Delivery:
     Attributes:
         lost: per section (N,), inputs that should have been written and were not, or nobody knows.
         written: inputs acknowledged (m,), engineering units, NaN where none were.
+        doubtful: inputs (m,) whose write was not answered: where they are is unknown until they are read back.
         charge_expected: per section (N,), whether the panel must show it in our charge next period: taken now, or ours
             already and not handed back for certain.
         sent: the set, None when it did not leave this process.
@@ -76,6 +77,7 @@ class Delivery:
 
     lost: Bools
     written: Floats
+    doubtful: Bools
     charge_expected: Bools
     sent: SentSet | None
     unknown: tuple[str, ...]
@@ -103,7 +105,8 @@ class Delivery:
                 for i, part in enumerate(parts)
             ]
         )
-        doubtful = [any(outcomes.get(tag) is WriteOutcome.UNKNOWN for tag in (*part.values, *commit)) for part in parts]
+        silence = [any(outcomes.get(tag) is WriteOutcome.UNKNOWN for tag in (*part.values, *commit)) for part in parts]
+        doubtful = outgoing.sends & np.array(silence)
         left = outgoing.sends.any() and all(outcomes.get(tag) is not WriteOutcome.NOT_SENT for tag in commit)
         taken = [
             bool(outgoing.sends[i]) and part.take and arrived(in_charge_tag(names[i])) for i, part in enumerate(parts)
@@ -122,7 +125,8 @@ class Delivery:
                     for signal, i in zip(design.inputs, design.section_of_input, strict=True)
                 ]
             ),
+            doubtful=doubtful[list(design.section_of_input)],
             charge_expected=np.array(taken) | np.array(kept),
-            sent=SentSet(k, outgoing.sends, lost & ~np.array(doubtful)) if left else None,
+            sent=SentSet(k, outgoing.sends, lost & ~doubtful) if left else None,
             unknown=tuple(tag for tag, outcome in outcomes.items() if outcome is WriteOutcome.UNKNOWN),
         )

@@ -172,7 +172,9 @@ class Period:
             blind=found.admission.blind,
             estimate=estimate,
             iterate=None if solved is None or plan is None or plan.outcome is Outcome.NOT_FINITE else solved[1],
-            last=np.where(np.isfinite(delivery.written), delivery.written, found.last),
+            last=np.where(
+                delivery.doubtful, np.nan, np.where(np.isfinite(delivery.written), delivery.written, found.last)
+            ),
             known=found.seen.known,
             charge_expected=delivery.charge_expected,
             sent=delivery.sent,

@@ -24,7 +24,8 @@ class Standing:
         blind: names of the sections that were blind.
         estimate: of the last period, None before the first.
         iterate: of the last period's solve, None when it did not come in time.
-        last: per input (m,), what it was told last, engineering units; NaN before it was ever read.
+        last: per input (m,), what it was told last, engineering units; NaN before it was ever read, and after a write
+            that was not answered until it is read back.
         known: measured disturbances of the last period (r,), scaled.
         charge_expected: per section (N,), whether the panel should show it in our charge.
         sent: counter of the last set sent and who had values in it, None when none is open.
