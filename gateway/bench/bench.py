@@ -314,8 +314,11 @@ class Bench:
             if child.code is not None:
                 raise child.failure()
 
-    @staticmethod
-    def _require_code(code: int, child: Child) -> None:
-        """A gateway ends with its time, stopped by us, or with sections on hold; anything else is a failure."""
-        if code not in (ExitCode.DONE, ExitCode.HELD):
+    def _require_code(self, code: int, child: Child) -> None:
+        """A gateway ends with its time, stopped by us, or with sections on hold; anything else is a failure.
+
+        Stopped before it was ready to be, it dies of our signal.
+        """
+        stopped = code == -signal.SIGINT and self._stop.is_set()
+        if code not in (ExitCode.DONE, ExitCode.HELD) and not stopped:
             raise child.failure()
