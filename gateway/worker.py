@@ -57,9 +57,14 @@ class ThreadWorker:
         self._busy: asyncio.Future[Solved] | None = None
         self._slow = 0
 
+    @property
+    def taken(self) -> bool:
+        """Whether the thread still works on a job, late or not."""
+        return self._busy is not None and not self._busy.done()
+
     async def solve(self, job: Job, stop_ns: int, due_ns: int) -> Solved | None:
         """Solve until `stop_ns` at most; None when there is no result by `due_ns` or the thread is still taken."""
-        if self._busy is not None and not self._busy.done():
+        if self.taken:
             await self._clock.sleep_until(due_ns)
             return None
         slow, self._slow = self._slow > 0, max(0, self._slow - 1)
