@@ -17,7 +17,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Mapping
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, field
 from importlib.metadata import version
 
 import numpy as np
@@ -74,6 +74,8 @@ class KnownDisturbance:
 class PlantDesign:
     """A plant file's design, frozen: physics, network, synthesis, observer, and who is where.
 
+    It prints as its fingerprint: a megabyte of numbers helps nobody in an error message.
+
     Attributes:
         outputs: measured signals in the order of y.
         inputs: driven signals in the order of u.
@@ -83,16 +85,16 @@ class PlantDesign:
         fingerprint: of the canonical plant file and the design built from it.
     """
 
-    plant: Plant
-    physics: PhysicsNetwork
-    point: OperatingPoint
-    network: Network
-    synthesis: Design
-    observer: Observer
-    scaling: Scaling
-    outputs: tuple[Signal, ...]
-    inputs: tuple[Signal, ...]
-    known: tuple[KnownDisturbance, ...]
+    plant: Plant = field(repr=False)
+    physics: PhysicsNetwork = field(repr=False)
+    point: OperatingPoint = field(repr=False)
+    network: Network = field(repr=False)
+    synthesis: Design = field(repr=False)
+    observer: Observer = field(repr=False)
+    scaling: Scaling = field(repr=False)
+    outputs: tuple[Signal, ...] = field(repr=False)
+    inputs: tuple[Signal, ...] = field(repr=False)
+    known: tuple[KnownDisturbance, ...] = field(repr=False)
     coupling_error: float
     fingerprint: str
 
