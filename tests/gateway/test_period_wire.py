@@ -110,7 +110,9 @@ def audit(rig: Rig, sent: Sent) -> None:
         assert happened.view.permit
         allowed(rig, signal, value, sent)
     for section, bit in sent.bits.items():
-        assert rig.state(section) in ((State.DRIVING, State.FROZEN) if bit else (State.HOLDING, State.WATCHING))
+        lost = rig.verdict(section) is Verdict.UNWRITTEN
+        right = (State.DRIVING, State.FROZEN) if bit else (State.HOLDING, State.WATCHING)
+        assert rig.state(section) in right or lost
         assert happened.view.in_charge[rig.place(section)] is not bit
     commit = ["panel.expires", "panel.period"] if sent.inputs else []
     heartbeat = [name for name in sent.names if name == "panel.heartbeat"]
