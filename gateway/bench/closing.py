@@ -65,7 +65,7 @@ def _sections(figures: Figures) -> Table:
     table = Table(box=None, padding=(0, 2, 0, 0), header_style=QUIET)
     table.add_column("section")
     table.add_column("ends", justify="left")
-    for name in ("level", "target", "mean error"):
+    for name in ("reads", "target", "mean error"):
         table.add_column(name, justify="right")
     table.add_column("periods by state")
     table.add_column("missed")
