@@ -21,7 +21,7 @@ from gateway.links.direct import DirectLink
 from gateway.links.protocol import Gathered, LinkStatistics, WriteOutcome
 from gateway.orders import Answer, apply_requests, settle
 from gateway.period import Happened, Period
-from gateway.plantfile.plant import HoldSpec, SiteKind
+from gateway.plantfile.plant import HoldSpec, SafeHold, SiteKind
 from gateway.requests import Asked, parse_request
 from gateway.service import LEAD_NS, first_standing
 from gateway.signals import Quality, Reading, Tag
@@ -139,6 +139,11 @@ def new_plant(design: PlantDesign, clock: VirtualClock) -> DirectPlant:
 def with_hold(design: PlantDesign, hold: HoldSpec) -> PlantDesign:
     """The same design with other numbers in its hold table."""
     return replace(design, plant=replace(design.plant, hold=hold))
+
+
+def with_safe_hold(design: PlantDesign, action: SafeHold) -> PlantDesign:
+    """The same design with this safe hold on every input."""
+    return replace(design, inputs=tuple(replace(signal, safe_hold=action) for signal in design.inputs))
 
 
 class Rig:
