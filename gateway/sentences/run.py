@@ -28,7 +28,8 @@ def run_ended(how: str, periods: int, missed: int) -> Notice:
     return Notice(
         Kind.RUN_ENDED,
         Level.ERROR if how == "failed" else Level.INFO,
-        f"The run {_ENDS.get(how, how)} after {counted(periods, 'period')}, {counted(missed, 'section-period')} missed.",
+        f"The run {_ENDS.get(how, how)} after {counted(periods, 'period')}, "
+        f"{counted(missed, 'section-period')} missed.",
         detail={"how": how, "periods": periods, "missed": missed},
     )
 
