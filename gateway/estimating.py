@@ -22,7 +22,7 @@ class Seen:
         y: outputs (p,), anything where not used.
         used: (p,) which of them were admitted.
         known: measured disturbances at their place in w (r,), zero elsewhere; the last good value where unusable.
-        returned: (N,) sections whose outputs are usable again after they were blind.
+        returned: (N,) sections that see again after they were blind, all their outputs usable.
     """
 
     y: Floats
@@ -54,7 +54,8 @@ class Seen:
             if value is not None:
                 rest = design.scaling.w_zero[one.place]
                 known[one.place] = (one.signal.scale.to_physics(value) - rest) / design.scaling.w_unit[one.place]
-        back = np.array([section.name in returned for section in design.plant.sections], dtype=bool)
+        unseen = {signal.section for signal, good in zip(design.outputs, used, strict=True) if not good}
+        back = np.array([section.name in returned - unseen for section in design.plant.sections], dtype=bool)
         return cls(design.scaling.y(y), used, known, back)
 
 

@@ -20,7 +20,7 @@ def intended_paths(
     design: PlantDesign,
     intentions: Sequence[Writes],
     in_charge: Sequence[bool],
-    last: Floats,
+    acting: Floats,
     bands: Mapping[str, tuple[float, float]],
 ) -> list[InputPath]:
     """Say of every input, before the synthesis, whether the synthesis decides it or what it will do instead.
@@ -28,13 +28,13 @@ def intended_paths(
     Args:
         intentions: per section, what it writes if this period is on time.
         in_charge: per section, whether our inputs reach its actuators.
-        last: what each input was told last, engineering units; NaN when unknown.
+        acting: what each input is taken to do now (m,), engineering units.
         bands: authority's band by tag, absent without one.
     """
     steps, period_s = design.synthesis.table.horizon, design.plant.period_s
     paths = []
     for k, (signal, i) in enumerate(zip(design.inputs, design.section_of_input, strict=True)):
-        known = float(last[k]) if isfinite(last[k]) else float(design.scaling.u_zero[k])
+        known = float(acting[k])
         band = bands.get(signal.tag, signal.hard)
         if intentions[i] in (Writes.SYNTHESIS, Writes.NOTHING):
             paths.append(InputPath(known, None, band))

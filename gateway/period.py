@@ -82,8 +82,10 @@ class _Found:
     """What gathering and admitting found.
 
     Attributes:
-        last: what every input was told last (m,): the panel's own word where it can be read, else ours.
-        ready: whether that is known of every input; without it nobody can drive.
+        last: what every input was told last (m,), NaN where nobody knows: the panel's own word where it can be read,
+            else ours, as long as nobody but us could have told it anything since.
+        acting: the same, with what was last known of it where nobody knows.
+        blind: names of the sections whose state nobody knows, for lack of measurements or of such an input.
     """
 
     gathered: Gathered
@@ -92,7 +94,8 @@ class _Found:
     memory: AdmitMemory
     seen: Seen
     last: Floats
-    ready: bool
+    acting: Floats
+    blind: frozenset[str]
 
 
 class Period:
@@ -114,9 +117,8 @@ class Period:
         self._clock = clock
         self._period_ns = round(design.plant.period_s * NS)
         self._rules = plan_admission(design.plant)
-        names = [section.name for section in design.plant.sections]
-        self._everybody = frozenset(names)
-        self._guard = Guard(design.inputs, names, design.plant.period_s)
+        self._names = [section.name for section in design.plant.sections]
+        self._guard = Guard(design.inputs, self._names, design.plant.period_s)
 
     async def run(
         self, k: int, due_ns: int, standing: Standing, asks: Mapping[int, Sequence[Ask]]
@@ -139,13 +141,12 @@ class Period:
 
         # Admit, estimate
         found = self._admit(k, standing, gathered)
-        estimate, innovation = self._estimate(standing, found)
+        estimate, innovation = estimate_period(design, standing.estimate, found.acting, standing.known, found.seen)
         watch.lap("estimate")
 
         # Synthesise, around whoever misses this period for certain
         not_taken = set_not_taken(design, standing, found.view)
-        blind = found.admission.blind if found.ready else self._everybody
-        foreseen = foresee(design, gathered, found.view, standing.charge_expected, blind, not_taken)
+        foreseen = foresee(design, gathered, found.view, standing.charge_expected, found.blind, not_taken)
         accounting = Accounting(design, k, standing.holds, asks)
         solved, broken = await self._synthesise(standing, accounting.account(foreseen), found, estimate, cut)
         plan = None if solved is None else solved[0]
@@ -169,12 +170,13 @@ class Period:
             standing,
             holds=decision.holds,
             admission=found.memory,
-            blind=found.admission.blind,
+            blind=found.blind,
             estimate=estimate,
             iterate=None if solved is None or plan is None or plan.outcome is Outcome.NOT_FINITE else solved[1],
             last=np.where(
                 delivery.doubtful, np.nan, np.where(np.isfinite(delivery.written), delivery.written, found.last)
             ),
+            acting=np.where(np.isfinite(delivery.written), delivery.written, found.acting),
             known=found.seen.known,
             charge_expected=delivery.charge_expected,
             sent=delivery.sent,
@@ -203,33 +205,30 @@ class Period:
         """Judge every reading; find out what the panel shows and what every input was told last."""
         view = view_panel(self._design, gathered.readings)
         admission, memory = admit(self._rules, standing.admission, k, gathered.readings, view.clock_ms)
-        seen = Seen.of(self._design, admission.by_tag(), standing.blind - admission.blind, standing.known)
-        last = np.where(np.isfinite(view.commands), view.commands, standing.last)
-        return _Found(gathered, view, admission, memory, seen, last, ready=bool(np.isfinite(last).all()))
-
-    def _estimate(self, standing: Standing, found: _Found) -> tuple[Estimate | None, Floats]:
-        """Estimate states and disturbances; the innovation is zero where nothing was estimated."""
-        if not found.ready:
-            return standing.estimate, np.zeros(len(self._design.outputs))
-        return estimate_period(self._design, standing.estimate, found.last, standing.known, found.seen)
+        sections = list(self._design.section_of_input)
+        ours = (standing.charge_expected & view.in_charge)[sections]
+        last = np.where(np.isfinite(view.commands), view.commands, np.where(ours, standing.last, np.nan))
+        acting = np.where(np.isfinite(last), last, standing.acting)
+        unknown = {self._names[i] for i, value in zip(sections, last, strict=True) if np.isnan(value)}
+        blind = admission.blind | unknown
+        seen = Seen.of(self._design, admission.by_tag(), standing.blind - blind, standing.known)
+        return _Found(gathered, view, admission, memory, seen, last, acting, blind)
 
     async def _synthesise(
         self,
         standing: Standing,
         intended: Decision,
         found: _Found,
-        estimate: Estimate | None,
+        estimate: Estimate,
         cut: Cutoff,
     ) -> tuple[Solved | None, str]:
         """Plan with what every input is known to do; None when that is late or breaks down, with the reason."""
-        if estimate is None:
-            return None, ""
         design = self._design
         intentions = [writes(hold.state) for hold in intended.holds]
-        paths = intended_paths(design, intentions, found.view.in_charge, found.last, standing.authority.bands())
+        paths = intended_paths(design, intentions, found.view.in_charge, found.acting, standing.authority.bands())
         job = Job(
             design.synthesis,
-            Measured(estimate.x, estimate.w + found.seen.known, design.scaling.u(found.last)),
+            Measured(estimate.x, estimate.w + found.seen.known, design.scaling.u(found.acting)),
             period_rows(design, paths, standing.targets),
             standing.iterate,
         )

@@ -21,11 +21,12 @@ class Standing:
         authority: of the whole gateway.
         targets: measured signal's tag -> target, engineering units.
         admission: what the judging of readings remembers.
-        blind: names of the sections that were blind.
+        blind: names of the sections whose estimate was not trusted.
         estimate: of the last period, None before the first.
         iterate: of the last period's solve, None when it did not come in time.
-        last: per input (m,), what it was told last, engineering units; NaN before it was ever read, and after a write
-            that was not answered until it is read back.
+        last: per input (m,), what it was told last, engineering units; NaN while nobody knows: before it was ever read,
+            and after a write that was not answered until it is read back.
+        acting: per input (m,), what it is taken to do for the estimate's sake: the last that was known of it.
         known: measured disturbances of the last period (r,), scaled.
         charge_expected: per section (N,), whether the panel should show it in our charge.
         sent: counter of the last set sent and who had values in it, None when none is open.
@@ -40,6 +41,7 @@ class Standing:
     estimate: Estimate | None
     iterate: Iterate | None
     last: Floats
+    acting: Floats
     known: Floats
     charge_expected: Bools
     sent: SentSet | None

@@ -83,6 +83,11 @@ def test_sections_that_see_again_are_marked(tarn_row: PlantDesign) -> None:
     assert see(tarn_row, admitted(), "tank-4", "tank-1").returned.tolist() == [True, *[False] * 2, True, *[False] * 4]
 
 
+def test_a_section_that_still_lacks_a_reading_does_not_start_anew(tarn_row: PlantDesign) -> None:
+    """It may see again for another reason, an input that is known again; there is no level to start from."""
+    assert not see(tarn_row, admitted(tank_4=None), "tank-4").returned.any()
+
+
 def test_the_first_estimate_is_what_the_plant_shows_at_rest(tarn_row: PlantDesign, rest: Floats) -> None:
     """Levels as read, pump flows as the inputs hold them, no disturbance, no innovation."""
     estimate, innovation = estimate_period(

@@ -175,9 +175,3 @@ def test_a_held_input_the_panel_drives_is_taken_to_stay_where_it_is(tarn_row: Pl
     """It is read anew every period."""
     _, given, _ = paths(tarn_row, HOLD, ours=False)
     assert given == [48.0] * 20
-
-
-def test_an_unknown_input_is_planned_at_rest(tarn_row: PlantDesign) -> None:
-    """A number is needed; nobody drives in such a period."""
-    _, given, _ = paths(tarn_row, FROZEN, last=nan)
-    assert given == pytest.approx([float(tarn_row.scaling.u_zero[3])] * 20)

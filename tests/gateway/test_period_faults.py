@@ -245,19 +245,33 @@ async def test_a_dead_transmitter_at_the_start_leaves_its_section_with_the_panel
     assert all(rig.state(name) is State.DRIVING and rig.in_charge(name) for name in OTHERS)
 
 
-async def test_an_input_nobody_can_read_keeps_everybody_from_driving(rig: Rig) -> None:
-    """Before a first command was read, nobody knows where a pump stands: all wait, and start when it is known."""
+async def test_an_input_nobody_can_read_keeps_its_section_from_driving(rig: Rig) -> None:
+    """Before a first command was read, nobody knows where the pump stands: its section waits, the others drive."""
     rig.link.shows["tank-4.pump"] = Reading(None, 0x80310000)
     await rig.run(2)
-    assert rig.verdicts() == {Verdict.BLIND}
-    assert not any(rig.in_charge(name) for name in rig.names)
+    assert alone(rig, Verdict.BLIND)
+    assert not rig.in_charge("tank-4")
     rig.link.shows.clear()
     await rig.run()
     assert rig.states() == {State.DRIVING}
 
 
+async def test_an_input_that_cannot_be_read_while_the_panel_drives_it_is_not_taken(rig: Rig) -> None:
+    """The local action has moved it since our last word about it, which therefore stands for nothing."""
+    await rig.run(5)
+    rig.link.shows["tank-4.pump"] = None
+    rig.plant.provoke("permit off for 0.9 s")
+    await rig.run(3)
+    assert alone(rig, Verdict.BLIND)
+    assert not rig.in_charge("tank-4")
+    rig.link.shows.clear()
+    await rig.run()
+    assert rig.state("tank-4") is State.DRIVING
+    assert abs(rig.told("tank-4") - rig.link.sent[-1].told["tank-4.pump"]) <= 10.0 + 1e-9
+
+
 async def test_an_input_that_cannot_be_read_for_a_while_is_where_it_was_told_to_be(driving: Rig) -> None:
-    """Once known, our own last acknowledged word stands in for the panel's."""
+    """While the section is ours, our own last acknowledged word stands in for the panel's."""
     driving.link.shows["tank-4.pump"] = Reading("stuck in transit")
     driving.ask("target tank-4.level 24")
     await driving.run(4)

@@ -173,6 +173,8 @@ async def watched(rig: Rig, periods: int) -> None:
         ("ask target tank-4.level 6", 3),
     ]
 )
+@example(schedule=[("wire hides tank-4.pump", 1), ("permit off for 1 s", 3)])
+@example(schedule=[("wire hides tank-4.pump", 0), ("ask authority observe", 1), ("ask authority full", 3)])
 @example(schedule=[("ask authority limited", 3), ("permit off", 4), ("permit on", 4), ("ask authority full", 2)])
 def test_nothing_but_what_the_table_allows_is_ever_on_the_wire(
     tarn_row: PlantDesign, schedule: list[tuple[str, int]]
