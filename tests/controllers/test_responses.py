@@ -79,6 +79,26 @@ def test_the_particular_response_obeys_the_plant(drawn: tuple[str, str, int]) ->
         assert not response.gain[:, n + r :].any()
 
 
+def test_an_input_may_stop_what_its_own_section_does_outside() -> None:
+    """Even alone, a section is confined when its input cancels what its state and disturbance do to its neighbour.
+
+    Section 0 pushes section 1 by 0.4 x + 0.3 w + u, so its input is −0.4 x − 0.3 w at every step, and nothing is free.
+    """
+    network = Network.from_matrices(
+        [[0.5, 0.0], [0.4, 0.5]], [[0.2, 0.0], [1.0, 1.0]], states={"0": 1, "1": 1}, e=[[1.0, 0.0], [0.3, 1.0]]
+    )
+    table = RowTable.build(network, everything(network), 4)
+    response = localized_responses(table, 0)[0]
+    assert response.report.localizable
+    assert response.basis.shape[1] == 0
+    for k, (x, w) in enumerate((([1.0, 0.0], [0.0, 0.0]), ([0.0, 0.0], [1.0, 0.0]))):
+        states, inputs = unfold(table, response.rows, response.gain[:, k])
+        own = np.concatenate([[x[0]], states[:-1, 0]])
+        np.testing.assert_allclose(inputs[:, 0], -0.4 * own - 0.3 * w[0], atol=1e-12)
+        np.testing.assert_allclose(trajectory(network, np.array(x), np.array(w), inputs), states, atol=1e-12)
+        assert not states[:, 1].any()
+
+
 @settings(max_examples=12)
 @given(plants)
 def test_the_basis_is_all_that_is_free_to_choose(drawn: tuple[str, str, int]) -> None:

@@ -5,6 +5,8 @@ Sources: `scipy.signal.cont2discrete` and `scipy.linalg.expm`; the stacked expon
 when the step is halved.
 """
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -61,6 +63,22 @@ def test_uncoupled_sections_are_exact_together(seed: int) -> None:
     none = sparse.csr_array((6, 0))
     found, _, _ = discretise(whole, none, none, offsets([1, 3, 2]), 0.4)
     np.testing.assert_allclose(found.toarray(), expm(whole.toarray() * 0.4), rtol=0, atol=1e-12)
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_a_section_is_exact_for_neighbours_that_hold_still(seed: int) -> None:
+    """Every section of a network equals the zero-order hold of itself with all other states as further held inputs."""
+    rng = np.random.default_rng(seed)
+    a, x_at = rng.normal(0, 1, (6, 6)), offsets([2, 1, 3])
+    none = sparse.csr_array((6, 0))
+    found = discretise(sparse.csr_array(a), none, none, x_at, 0.7)[0].toarray()
+    for lo, hi in pairwise(x_at):
+        own, others = slice(int(lo), int(hi)), np.setdiff1d(np.arange(6), np.arange(lo, hi))
+        n = int(hi - lo)
+        continuous = (a[own, own], a[own, others], np.eye(n), np.zeros((n, len(others))))
+        exact, held = (np.asarray(matrix) for matrix in cont2discrete(continuous, 0.7, method="zoh")[:2])
+        np.testing.assert_allclose(found[own, own], exact, rtol=0, atol=1e-12)
+        np.testing.assert_allclose(found[own, others], held, rtol=0, atol=1e-12)
 
 
 @pytest.mark.parametrize("seed", range(6))
