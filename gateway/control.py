@@ -135,7 +135,7 @@ async def _run(options: RunOptions, design: PlantDesign, site: SiteSpec, clock: 
         stack.push_async_callback(link.close)
         journal = _journal(options, design, site, run_id, clock, told)
         how = [RunEnd.FAILED]
-        stack.callback(lambda: journal.close(clock.wall_ns(), how[0]))
+        stack.callback(lambda: _finish_journal(journal, clock, how[0], told))
         desk = _desk(options, plant, run_id, clock, told)
         stack.callback(desk.close)
         worker = ThreadWorker(clock)
@@ -192,6 +192,13 @@ def _journal(
         ) from error
     except StorageError as error:
         raise StartError(str(error), ExitCode.WRONG_CALL) from error
+
+
+def _finish_journal(journal: Journal, clock: Clock, how: RunEnd, told: _Teller) -> None:
+    """Close the journal; what could not be written is said where it still can be, in the log."""
+    if not journal.close(clock.wall_ns(), how):
+        counts = journal.statistics()
+        told.log(sentences.journal_unfinished(counts.depth + counts.lost_periods + counts.lost_notes), None)
 
 
 def _desk(options: RunOptions, plant: Plant, run_id: str, clock: Clock, told: _Teller) -> RequestDesk:

@@ -69,6 +69,17 @@ def journal_dead(error: str) -> Notice:
     )
 
 
+def journal_unfinished(lost: int) -> Notice:
+    """The run ended while its journal could not be written."""
+    return Notice(
+        Kind.JOURNAL,
+        Level.ERROR,
+        f"The journal could not be finished: {counted(lost, 'record')} and the end of this run are not in it. "
+        "Make room on its disk; the next start comes up on hold.",
+        detail={"state": "unfinished", "lost": lost},
+    )
+
+
 def journal_lost(what: str, cause: str, count: int, first_k: int | None, last_k: int | None) -> Notice:
     """The gap in the journal, told inside it."""
     where = "" if first_k is None else f" between periods {first_k} and {last_k}"

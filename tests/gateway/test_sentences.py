@@ -70,6 +70,7 @@ ALL = (
     sentences.journal_behind(600, 1200),
     sentences.journal_losing("all 1200 places of its queue are taken"),
     sentences.journal_unrecordable("object cannot be recorded"),
+    sentences.journal_unfinished(40),
     sentences.journal_recovered(3, 5),
     sentences.journal_recovered(0, 0),
     sentences.journal_dead("ZeroDivisionError: our fault"),
