@@ -1,0 +1,95 @@
+"""Setting every racer to the same accuracy: as loose as it may be, and as well tuned as a careful user would.
+
+`calibrate` tries, on a small plant of the same kind and horizon, every tuning of a racer, each with the loosest
+tolerance that reaches the accuracy in every period, and keeps the fastest. `verify` runs that setup on the plant that
+is raced and tightens the tolerance until it holds there, too, so that nobody is judged by the small plant.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from statistics import median
+from time import perf_counter
+
+from tests.races.contest import Contest
+from tests.races.course import Stretch
+from tests.races.race import Entrant, Lap, alone, enter, enter_weighed, judged, worst_error
+from tests.races.racers.protocol import Entry, Setup
+
+TIGHTENED = 10**-0.5
+MOST_TIGHTENINGS = 6
+
+
+@dataclass(frozen=True)
+class Retired:
+    """Why a racer does not take part."""
+
+    racer: str
+    reason: str
+
+
+@dataclass(frozen=True)
+class Patience:
+    """How long is too long, in seconds: for one period, and for calibrating one tuning."""
+
+    period_s: float = 2.0
+    tuning_s: float = 5.0
+
+
+@dataclass(frozen=True)
+class Calibrated:
+    """The setup found, and its median seconds per period on the small plant."""
+
+    setup: Setup
+    period_s: float
+
+
+def calibrate(
+    contest: Contest, entry: Entry, stretches: Sequence[Stretch], accuracy: float, patience: Patience
+) -> Calibrated | Retired:
+    """Find the fastest setup that reaches the accuracy (largest error of first inputs, in spans) on a small contest."""
+    found = [
+        setup
+        for tuning in entry.tunings
+        if (setup := _loosest(contest, entry, Setup(0.0, tuning), stretches, accuracy, patience)) is not None
+    ]
+    if not found:
+        return Retired(entry.name, f"does not reach {accuracy:g} of span in time at {contest.size} sections")
+    return min(found, key=lambda each: each.period_s)
+
+
+def _loosest(
+    contest: Contest, entry: Entry, setup: Setup, stretches: Sequence[Stretch], accuracy: float, patience: Patience
+) -> Calibrated | None:
+    """The loosest tolerance that will do, None when none does in time."""
+    until = perf_counter() + patience.tuning_s
+    for tolerance in entry.tolerances:
+        tried = replace(setup, tolerance=tolerance)
+        laps = alone(contest, enter(contest, entry, tried), stretches, patience.period_s)
+        if _too_slow(laps, patience) or perf_counter() > until:
+            return None
+        if worst_error(laps) <= accuracy:
+            return Calibrated(tried, median(each.duration_s for each in judged(laps)))
+    return None
+
+
+def verify(
+    contest: Contest, entry: Entry, setup: Setup, stretches: Sequence[Stretch], accuracy: float, patience: Patience
+) -> Entrant | Retired:
+    """Enter the contest that is raced with this setup, tightened until it reaches the accuracy in all its periods."""
+    error = float("inf")
+    for _ in range(MOST_TIGHTENINGS):
+        entrant = enter_weighed(contest, entry, setup)
+        laps = alone(contest, entrant, stretches, patience.period_s)
+        if _too_slow(laps, patience):
+            return Retired(entry.name, f"took {laps[-1].duration_s:.1f} s for one period")
+        error = worst_error(laps)
+        if error <= accuracy:
+            return entrant
+        setup = replace(setup, tolerance=setup.tolerance * TIGHTENED)
+    return Retired(entry.name, f"does not reach {accuracy:g} of span (last error {error:.1e})")
+
+
+def _too_slow(laps: Sequence[Lap], patience: Patience) -> bool:
+    return laps[-1].duration_s > patience.period_s

@@ -1,0 +1,38 @@
+"""This synthesis, as the gateway calls it."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+from controllers.rows import RowData
+from controllers.synthesis import Iterate, Measured, Outcome, Settings
+from tests.races.contest import Contest
+from tests.races.racers.protocol import Answer, Entry, Family, Setup
+
+
+class Running:
+    """The design and the last iterate."""
+
+    def __init__(self, contest: Contest, setup: Setup) -> None:
+        settings = Settings(tolerance_spans=setup.tolerance, max_iterations=3000, **setup.tuning)
+        self._design = replace(contest.design, settings=settings)
+        self._before: Iterate | None = None
+
+    def solve(self, measured: Measured, data: RowData) -> Answer:
+        """One solve, warm from the last."""
+        plan, self._before = self._design.solve(measured, data, self._before)
+        return Answer(plan.inputs, plan.iterations, plan.outcome is Outcome.CONVERGED)
+
+    def forget(self) -> None:
+        """Start cold."""
+        self._before = None
+
+
+ENTRY = Entry(
+    name="this synthesis",
+    family=Family.LOCALIZED,
+    package="controllers",
+    enter=Running,
+    tolerances=tuple(10 ** (-k / 3) for k in range(4, 19)),
+    tunings=tuple({"rho": rho, "relax": relax, "chunk": 3} for rho in (0.3, 1.0, 3.0, 10.0) for relax in (1.6, 1.8)),
+)

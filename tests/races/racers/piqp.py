@@ -1,0 +1,56 @@
+"""PIQP, proximal interior point: symbolic factorisation and scaling kept, vectors updated. It has no warm start."""
+
+from __future__ import annotations
+
+from scipy import sparse
+
+from controllers.rows import RowData
+from controllers.synthesis import Measured
+from tests.races.program import Program
+from tests.races.racers.protocol import Answer, Entry, Family, Setup, load
+
+
+class Running:
+    """A solver that was set up."""
+
+    def __init__(self, program: Program, setup: Setup, usual: RowData) -> None:
+        piqp = load("piqp")
+        self._solver = piqp.SparseSolver()
+        settings = self._solver.settings
+        settings.eps_abs = settings.eps_rel = setup.tolerance
+        settings.eps_duality_gap_abs = settings.eps_duality_gap_rel = setup.tolerance
+        settings.preconditioner_reuse_on_update = True
+        settings.kkt_solver = getattr(piqp.KKTSolver, setup.tuning["kkt_solver"])
+        self._solved = piqp.PIQP_SOLVED
+        self._program = program
+        numbers, e = program.numbers(program.rest, usual), program.equations
+        rows = sparse.csr_array(program.k)
+        self._solver.setup(
+            program.p,
+            numbers.g,
+            sparse.csc_matrix(rows[:e]),
+            numbers.lower[:e],
+            sparse.csc_matrix(rows[e:]),
+            numbers.lower[e:],
+            numbers.upper[e:],
+        )
+
+    def solve(self, measured: Measured, data: RowData) -> Answer:
+        """Update vectors and solve."""
+        numbers, e = self._program.numbers(measured, data), self._program.equations
+        self._solver.update(c=numbers.g, b=numbers.lower[:e], h_l=numbers.lower[e:], h_u=numbers.upper[e:])
+        status, result = self._solver.solve(), self._solver.result
+        return Answer(result.x[self._program.inputs], int(result.info.iter), status == self._solved)
+
+    def forget(self) -> None:
+        """Nothing is remembered."""
+
+
+ENTRY = Entry(
+    name="PIQP",
+    family=Family.INTERIOR,
+    package="piqp",
+    enter=lambda contest, setup: Running(contest.program, setup, contest.usual),
+    tolerances=tuple(10.0**-k for k in range(2, 10)),
+    tunings=tuple({"kkt_solver": solver} for solver in ("sparse_ldlt", "sparse_ldlt_ineq_cond", "sparse_multistage")),
+)
