@@ -1,11 +1,11 @@
 """Localized predictive control by explicit synthesis: pure numerics, arrays in, arrays out.
 
-Problem. A plant of coupled sections (`network`) is to be driven to targets within limits (`rows`), every section using
-only what happens a few couplings away (`responses`), inside a sampling period (`synthesis`, loops in `kernels`).
-`linearise` makes the network from physics, `observer` the measurement, `central` the answer to compare with, and
-`spectrum` says whether the loop is stable. No clock, no I/O, no logging.
+Problem. A plant of coupled sections (`network`) is to be driven to targets within limits (`quantities`, `rows`), every
+section using only what happens a few couplings away (`responses`), inside a sampling period (`synthesis`, loops in
+`kernels`). `linearise` makes the network from physics, `observer` the measurement, `central` the answer to compare
+with, and `spectrum` says whether the loop is stable. No clock, no I/O, no logging.
 
-    network -> rows -> responses -> synthesis -> central, spectrum -> observer
+    network -> quantities -> rows -> responses -> plans -> synthesis -> central, spectrum -> observer
 """
 
 from controllers.exceptions import (
@@ -20,8 +20,11 @@ from controllers.exceptions import (
 )
 from controllers.network import Network
 from controllers.observer import Estimate, Noise, Observer
-from controllers.rows import Of, Quantity, Region, RowData, RowTable
-from controllers.synthesis import Design, Iterate, Measured, Outcome, Plan, Settings
+from controllers.plans import Iterate, Measured, Outcome, Plan, Settings
+from controllers.quantities import Of, Quantity
+from controllers.row_rule import Region
+from controllers.rows import RowData, RowTable
+from controllers.synthesis import Design
 
 __all__ = [
     "ControllerError",

@@ -19,8 +19,8 @@ from scipy import sparse
 
 from controllers.arrays import Floats
 from controllers.exceptions import ReferenceSolveError
+from controllers.plans import Measured
 from controllers.rows import RowData, RowTable
-from controllers.synthesis import Measured
 
 
 @dataclass(frozen=True)

@@ -1,8 +1,6 @@
 """Rows: everything that is priced or limited, one number at one step of the horizon.
 
-A **quantity** is a linear functional of one section's outputs, states, inputs or moves. Over a horizon of T steps it
-becomes T rows: outputs and states at t = 1..T, inputs and moves at t = 0..T−1, a move being u_t − u_{t−1} with u_{−1}
-what was written last. Row r costs, in spans (value / span of the quantity),
+Every quantity (`controllers.quantities`) becomes T rows. Row r costs, in spans (value / span of the quantity),
 
     f_r(z) = q_r (z − c_r)² + s_r dist(z, [a_r, b_r])²    on  lo_r ≤ z ≤ hi_r                        (2)
 
@@ -17,9 +15,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
-from enum import Enum
 from functools import cached_property
-from math import inf
 
 import numpy as np
 import numpy.typing as npt
@@ -28,74 +24,7 @@ from scipy import sparse
 from controllers.arrays import Floats, Ints
 from controllers.exceptions import RowError
 from controllers.network import Network
-
-
-class Of(Enum):
-    """What a quantity is a functional of."""
-
-    OUTPUT = "output"
-    STATE = "state"
-    INPUT = "input"
-    MOVE = "move"
-
-    @property
-    def ahead(self) -> bool:
-        """Whether its steps are t = 1..T (outputs, states) rather than t = 0..T−1 (inputs, moves)."""
-        return self in (Of.OUTPUT, Of.STATE)
-
-
-@dataclass(frozen=True)
-class Quantity:
-    """One priced or limited quantity and its usual numbers, all in the network's units.
-
-    Attributes:
-        name: how it is addressed, unique in a table.
-        section: the section it belongs to.
-        of: outputs, states, inputs or moves of that section.
-        mix: coefficients over them; (1.0,) is the first.
-        span: engineering range; rows are scaled by it.
-        weight: weight of its rows in the norm of the split; a matter of speed only, never of the optimum.
-        price: q, per span squared; one number or one per step.
-        target: c.
-        soft: [a, b], and `soft_price` s.
-        hard: [lo, hi].
-    """
-
-    name: str
-    section: str
-    of: Of
-    mix: tuple[float, ...] = (1.0,)
-    span: float = 1.0
-    weight: float = 1.0
-    price: float | tuple[float, ...] = 0.0
-    target: float = 0.0
-    soft: tuple[float, float] = (-inf, inf)
-    soft_price: float = 0.0
-    hard: tuple[float, float] = (-inf, inf)
-
-    def __post_init__(self) -> None:
-        prices = np.atleast_1d(np.asarray(self.price, dtype=float))
-        problems = (
-            (
-                not np.isfinite(self.mix).all() or not any(self.mix),
-                f"mix is {self.mix}",
-                "give finite coefficients, not all zero",
-            ),
-            (not 0 < self.span < inf, f"span is {self.span}", "give a positive, finite span"),
-            (not 0 < self.weight < inf, f"weight is {self.weight}", "give a positive, finite weight"),
-            (not (np.isfinite(prices).all() and (prices >= 0).all()), f"price is {self.price}", "give zero or more"),
-            (not np.isfinite(self.target), f"target is {self.target}", "give a finite target"),
-            (not 0 <= self.soft_price < inf, f"soft_price is {self.soft_price}", "give zero or more"),
-            (not self.soft[0] <= self.soft[1], f"soft band is {self.soft}", "give (lower, upper) with lower <= upper"),
-            (
-                not self.hard[0] <= self.hard[1],
-                f"hard limits are {self.hard}",
-                "give (lower, upper) with lower <= upper",
-            ),
-        )
-        for wrong, read, fix in problems:
-            if wrong:
-                raise RowError(f"quantity {self.name!r}: {read}; {fix}")
+from controllers.quantities import Of, Quantity
 
 
 @dataclass(frozen=True)
@@ -276,31 +205,3 @@ def _check_sizes(network: Network, quantity: Quantity, horizon: int) -> None:
             f"quantity {quantity.name!r}: {np.size(quantity.price)} prices for {horizon} steps; "
             "give one number or one per step"
         )
-
-
-class Region(Enum):
-    """Where the row rule left an input."""
-
-    LOWER = "at lower limit"
-    FREE = "free"
-    UPPER = "at upper limit"
-
-
-def row_rule(a: Floats, penalty: Floats, data: RowData) -> Floats:
-    """Closed-form minimiser of f_r(z) + (p/2)(z − a)² for every row, rule (5); the oracle of the compiled kernel.
-
-    Explicit solution of the row problem with three regions and a clip: arXiv:2005.13807.
-
-    Args:
-        a: where each row is pulled to, (R,) in spans.
-        penalty: p, (R,).
-        data: numbers of (2).
-    """
-    q, s = data.price, data.soft_price
-    pull = penalty * a + 2 * q * data.target
-    free = pull / (penalty + 2 * q)
-    with np.errstate(invalid="ignore"):  # an absent band is infinite and priced zero: 0 · inf is never selected
-        above = (pull + 2 * s * data.soft_upper) / (penalty + 2 * q + 2 * s)
-        below = (pull + 2 * s * data.soft_lower) / (penalty + 2 * q + 2 * s)
-    z = np.where(free > data.soft_upper, above, np.where(free < data.soft_lower, below, free))
-    return np.asarray(np.clip(z, data.lower, data.upper))

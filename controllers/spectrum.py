@@ -8,8 +8,8 @@ from scipy.sparse.linalg import eigs, splu
 
 from controllers.arrays import Floats
 from controllers.central import assemble
+from controllers.plans import Measured
 from controllers.rows import RowData, RowTable
-from controllers.synthesis import Measured
 
 DENSE_LIMIT = 400
 

@@ -35,97 +35,18 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from enum import Enum
 
 import numpy as np
 
 from controllers import kernels
 from controllers.arrays import Floats, Ints
-from controllers.exceptions import NotFiniteError
+from controllers.finite import require_finite
 from controllers.network import Network
+from controllers.plans import Iterate, Measured, Outcome, Plan, Settings
+from controllers.quantities import Of, Quantity
 from controllers.responses import Response, localized_responses, require_localizable
-from controllers.rows import Of, Quantity, Region, RowData, RowTable
-
-
-class Outcome(Enum):
-    """How a solve ended. All but the last return a plan that obeys every hard limit."""
-
-    CONVERGED = "converged"
-    OUT_OF_TIME = "out of time"
-    OUT_OF_ITERATIONS = "out of iterations"
-    NOT_FINITE = "not finite"
-
-
-@dataclass(frozen=True)
-class Settings:
-    """Settings of the iteration; none of them moves the optimum.
-
-    Attributes:
-        rho: penalty of the split, cost per span squared.
-        relax: over-relaxation, in (0, 2).
-        chunk: passes between two looks at the clock and the residuals.
-        tolerance_spans: largest primal residual and last change of the plan, in spans, called converged.
-        max_iterations: most passes of one solve.
-        pull_passes: column steps that pull a shifted plan onto a new measurement.
-    """
-
-    rho: float = 0.3
-    relax: float = 1.6
-    chunk: int = 5
-    tolerance_spans: float = 1e-3
-    max_iterations: int = 400
-    pull_passes: int = 3
-
-
-@dataclass(frozen=True)
-class Measured:
-    """What one period starts from: states (n,), disturbances held over the horizon (r,), inputs written last (m,)."""
-
-    x: Floats
-    w: Floats
-    u_before: Floats
-
-
-@dataclass(frozen=True)
-class Iterate:
-    """State of the iteration between periods, weighted rows (R,) each."""
-
-    z: Floats
-    y: Floats
-    l: Floats  # noqa: E741 - the symbol of the package head
-
-    @property
-    def finite(self) -> bool:
-        """Whether every number is finite; what is not must never reach the next period."""
-        return all(bool(np.isfinite(part).all()) for part in (self.z, self.y, self.l))
-
-
-@dataclass(frozen=True)
-class Plan:
-    """What a solve returns.
-
-    Attributes:
-        outcome: how it ended.
-        iterations: passes run.
-        rows: the row copy z, (R,) in spans.
-        inputs: first inputs, (m,) in the network's units; NaN where an input has no quantity.
-        region: for every input, at which limit its first value rests.
-        primal: largest |z − y| of every section, (N,) in spans.
-        change: largest change of y in the last pass of every section, (N,) in spans.
-    """
-
-    outcome: Outcome
-    iterations: int
-    rows: Floats
-    inputs: Floats
-    region: tuple[Region, ...]
-    primal: Floats
-    change: Floats
-
-    @property
-    def residual(self) -> Floats:
-        """Larger of the two residuals of every section, (N,) in spans."""
-        return np.maximum(self.primal, self.change)
+from controllers.row_rule import Region
+from controllers.rows import RowData, RowTable
 
 
 @dataclass(frozen=True)
@@ -257,7 +178,7 @@ class Design:
             NotFiniteError: a measurement, price or target is not finite, or a limit is NaN.
         """
         data = self.data() if data is None else data
-        self._require_finite(measured, data)
+        require_finite(self.table, measured, data)
         y0 = self.free_response(measured)
         start = (
             Iterate(y0.copy(), y0, np.zeros_like(y0)) if before is None or not before.finite else self.warm(y0, before)
@@ -351,32 +272,3 @@ class Design:
         worst = np.zeros(table.network.size)
         np.maximum.at(worst, table.section, np.abs(spans))
         return worst
-
-    def _require_finite(self, measured: Measured, data: RowData) -> None:
-        net = self.table.network
-        for what, values, at in (
-            ("state", measured.x, net.x_at),
-            ("disturbance", measured.w, net.w_at),
-            ("last input", measured.u_before, net.u_at),
-        ):
-            if values.shape != (at[-1],):
-                raise NotFiniteError(f"{what}s have shape {values.shape}; the network wants ({at[-1]},)")
-            bad = np.flatnonzero(~np.isfinite(values))
-            if len(bad):
-                section = net.names[int(np.searchsorted(at, bad[0], side="right") - 1)]
-                raise NotFiniteError(
-                    f"{what} of section {section!r} is {values[bad[0]]}; hold the section or coast its estimate instead"
-                )
-        for what, numbers, wrong in (
-            ("price", data.price, ~np.isfinite(data.price)),
-            ("target", data.target, ~np.isfinite(data.target)),
-            ("soft price", data.soft_price, ~np.isfinite(data.soft_price)),
-            ("lower end of the soft band", data.soft_lower, np.isnan(data.soft_lower)),
-            ("upper end of the soft band", data.soft_upper, np.isnan(data.soft_upper)),
-            ("lower hard limit", data.lower, np.isnan(data.lower)),
-            ("upper hard limit", data.upper, np.isnan(data.upper)),
-        ):
-            bad = np.flatnonzero(wrong)
-            if len(bad):
-                quantity = self.table.quantities[int(bad[0]) // self.table.horizon]
-                raise NotFiniteError(f"{what} of quantity {quantity.name!r} is {numbers[bad[0]]}; give a number")

@@ -19,7 +19,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from controllers.arrays import Floats, Ints
-from controllers.rows import RowData, row_rule
+from controllers.row_rule import row_rule
+from controllers.rows import RowData
 
 Nearest = Callable[[Floats], Floats]
 """Projection of one contribution's weighted rows onto what it is allowed to be."""

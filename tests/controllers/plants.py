@@ -20,8 +20,8 @@ from scipy import sparse
 from controllers.arrays import Floats, Ints
 from controllers.linearise import discretise
 from controllers.network import Network, offsets
-from controllers.rows import Of, Quantity
-from controllers.synthesis import Measured
+from controllers.plans import Measured
+from controllers.quantities import Of, Quantity
 
 Edges = list[tuple[int, int]]
 Graph = tuple[int, Edges]

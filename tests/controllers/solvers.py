@@ -18,8 +18,9 @@ import piqp
 from scipy import sparse
 
 from controllers.arrays import Floats
+from controllers.plans import Measured
 from controllers.rows import RowData, RowTable
-from controllers.synthesis import Design, Measured
+from controllers.synthesis import Design
 from tests.controllers.plants import rows_of_trajectory, trajectory
 
 

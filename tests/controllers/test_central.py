@@ -9,8 +9,9 @@ from hypothesis import strategies as st
 
 from controllers.central import assemble, solve_central
 from controllers.exceptions import ReferenceSolveError
-from controllers.rows import Of, Quantity, RowTable
-from controllers.synthesis import Measured
+from controllers.plans import Measured
+from controllers.quantities import Of, Quantity
+from controllers.rows import RowTable
 from tests.controllers.plants import (
     SHAPES,
     anywhere,

@@ -6,7 +6,7 @@ from hypothesis import strategies as st
 
 from controllers import kernels
 from controllers.arrays import Floats, Ints
-from controllers.rows import row_rule
+from controllers.row_rule import row_rule
 from tests.controllers.random_rows import random_rows
 
 Contributions = list[tuple[Ints, Floats]]

@@ -10,7 +10,8 @@ from hypothesis import strategies as st
 from controllers.exceptions import ObserverError
 from controllers.network import Network
 from controllers.observer import Estimate, Noise, Observer, seed
-from controllers.synthesis import Design, Measured, Settings
+from controllers.plans import Measured, Settings
+from controllers.synthesis import Design
 from tests.controllers.plants import SHAPES, anywhere, grid, row, tank_quantities, tanks, zones
 
 

@@ -16,8 +16,9 @@ from scipy.linalg import null_space
 from controllers.arrays import Floats, Ints
 from controllers.exceptions import NotLocalizableError
 from controllers.network import Network
+from controllers.quantities import Of
 from controllers.responses import least_locality, localized_responses, require_localizable
-from controllers.rows import Of, RowTable
+from controllers.rows import RowTable
 from tests.controllers.plants import (
     SHAPES,
     everything,

@@ -6,7 +6,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 from scipy import sparse
 
-from controllers.rows import Of, RowTable
+from controllers.quantities import Of
+from controllers.rows import RowTable
 from controllers.spectrum import DENSE_LIMIT, closed_loop_radius, spectral_radius, unlimited_law
 from tests.controllers.plants import (
     anywhere,

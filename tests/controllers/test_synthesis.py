@@ -10,8 +10,11 @@ import pytest
 from controllers.arrays import Floats
 from controllers.exceptions import NotFiniteError, NotLocalizableError
 from controllers.network import Network
-from controllers.rows import Of, Quantity, Region, RowData
-from controllers.synthesis import Design, Iterate, Measured, Outcome, Settings
+from controllers.plans import Iterate, Measured, Outcome, Settings
+from controllers.quantities import Of, Quantity
+from controllers.row_rule import Region
+from controllers.rows import RowData
+from controllers.synthesis import Design
 from tests.controllers.full_split import Nearest, Split, one_pass, summed
 from tests.controllers.plants import (
     SHAPES,

@@ -13,8 +13,10 @@ from scipy.linalg import cholesky, solve_discrete_lyapunov
 
 from controllers.arrays import Floats
 from controllers.network import Network
-from controllers.rows import Of, Quantity, Region
-from controllers.synthesis import Design, Measured, Settings
+from controllers.plans import Measured, Settings
+from controllers.quantities import Of, Quantity
+from controllers.row_rule import Region
+from controllers.synthesis import Design
 from tests.controllers.solvers import SOLVERS, Program
 
 A = np.array([[0.7326, -0.0861], [0.1722, 0.9909]])

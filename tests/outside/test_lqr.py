@@ -10,9 +10,11 @@ import pytest
 from scipy.linalg import block_diag, solve_discrete_are
 
 from controllers.arrays import Floats
-from controllers.rows import Of, Quantity, RowTable
+from controllers.plans import Settings
+from controllers.quantities import Of, Quantity
+from controllers.rows import RowTable
 from controllers.spectrum import closed_loop_radius, unlimited_law
-from controllers.synthesis import Design, Settings
+from controllers.synthesis import Design
 from tests.controllers.plants import anywhere, everything, grid, row, tank_quantities, tanks, unlimited, zones
 
 

@@ -12,7 +12,8 @@ import numpy as np
 import pytest
 
 from controllers.arrays import Floats
-from controllers.rows import RowData, row_rule
+from controllers.row_rule import row_rule
+from controllers.rows import RowData
 from tests.controllers.random_rows import random_rows
 from tests.controllers.solvers import SOLVERS, Program, best_plan, row_program
 

@@ -14,8 +14,10 @@ import pytest
 
 from controllers.arrays import Floats, Ints
 from controllers.network import Network, span_indices
-from controllers.rows import Of, RowData
-from controllers.synthesis import Design, Iterate, Measured, Settings
+from controllers.plans import Iterate, Measured, Settings
+from controllers.quantities import Of
+from controllers.rows import RowData
+from controllers.synthesis import Design
 from tests.controllers.full_split import Nearest, Split, one_pass, summed
 from tests.controllers.plants import SHAPES, anywhere, everything, tanks, zones
 

@@ -12,8 +12,9 @@ import pytest
 
 from controllers.arrays import Floats
 from controllers.central import solve_central
-from controllers.rows import Of
-from controllers.synthesis import Design, Measured, Outcome, Plan, Settings
+from controllers.plans import Measured, Outcome, Plan, Settings
+from controllers.quantities import Of
+from controllers.synthesis import Design
 from tests.controllers.plants import SHAPES, anywhere, tank_quantities, tanks, zone_quantities, zones
 from tests.controllers.solvers import SOLVERS, best_plan, condensed, localized
 

@@ -8,8 +8,10 @@ from functools import cached_property
 import numpy as np
 
 from controllers.arrays import Floats
-from controllers.rows import Of, RowData, RowTable
-from controllers.synthesis import Design, Measured
+from controllers.plans import Measured
+from controllers.quantities import Of
+from controllers.rows import RowData, RowTable
+from controllers.synthesis import Design
 from tests.races.plants import LOCALITY, PLANTS, Plant
 from tests.races.program import Program
 

@@ -13,8 +13,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from controllers.arrays import Floats
+from controllers.plans import Measured
 from controllers.rows import RowData
-from controllers.synthesis import Measured
 from tests.races.contest import Contest
 from tests.races.truth import Truth
 

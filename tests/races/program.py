@@ -19,8 +19,8 @@ import numpy as np
 from scipy import sparse
 
 from controllers.arrays import Floats, Ints
+from controllers.plans import Measured
 from controllers.rows import RowData, RowTable
-from controllers.synthesis import Measured
 
 
 @dataclass(frozen=True)

@@ -24,8 +24,10 @@ import numpy as np
 from numba import njit
 
 from controllers.arrays import Floats, Ints
-from controllers.rows import RowData, row_rule
-from controllers.synthesis import Design, Measured
+from controllers.plans import Measured
+from controllers.row_rule import row_rule
+from controllers.rows import RowData
+from controllers.synthesis import Design
 from tests.races.contest import Contest
 from tests.races.course import Stretch
 from tests.races.racers.protocol import load

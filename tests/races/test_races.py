@@ -12,7 +12,7 @@ import pytest
 from click.testing import CliRunner
 
 from controllers.central import solve_central
-from controllers.rows import Of
+from controllers.quantities import Of
 from tests.races.calibrate import Calibrated, Patience, calibrate
 from tests.races.command import main
 from tests.races.contest import Contest

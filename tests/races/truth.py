@@ -18,8 +18,8 @@ from typing import Any, Protocol
 import numpy as np
 
 from controllers.arrays import Floats
+from controllers.plans import Measured
 from controllers.rows import RowData
-from controllers.synthesis import Measured
 from tests.races.program import Numbers, OneSided, Program
 from tests.races.racers.protocol import available, load
 

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from typing import Any
 
+from controllers.plans import Measured
 from controllers.rows import RowData
-from controllers.synthesis import Measured
 from tests.races.program import Program
 from tests.races.racers.protocol import Answer, Entry, Family, Setup, load
 

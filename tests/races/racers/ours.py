@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from dataclasses import replace
 
+from controllers.plans import Iterate, Measured, Outcome, Settings
 from controllers.rows import RowData
-from controllers.synthesis import Iterate, Measured, Outcome, Settings
 from tests.races.contest import Contest
 from tests.races.racers.protocol import Answer, Entry, Family, Setup
 

@@ -14,8 +14,8 @@ from importlib.util import find_spec
 from typing import Any, Protocol
 
 from controllers.arrays import Floats
+from controllers.plans import Measured
 from controllers.rows import RowData
-from controllers.synthesis import Measured
 from tests.races.contest import Contest
 
 
