@@ -21,7 +21,7 @@ from controllers.exceptions import (
 from controllers.network import Network
 from controllers.observer import Estimate, Noise, Observer
 from controllers.plans import Iterate, Measured, Outcome, Plan, Settings
-from controllers.quantities import Of, Quantity
+from controllers.quantities import Of, Quantity, Term
 from controllers.row_rule import Region
 from controllers.rows import RowData, RowTable
 from controllers.synthesis import Design
@@ -50,4 +50,5 @@ __all__ = [
     "RowError",
     "RowTable",
     "Settings",
+    "Term",
 ]

@@ -139,6 +139,10 @@ class Network:
         reach.sort_indices()
         return [reach.indices[reach.indptr[i] : reach.indptr[i + 1]].astype(np.int64) for i in range(self.size)]
 
+    def distances(self, sections: Ints) -> Floats:
+        """(len(sections), N) couplings between these sections and all; infinite between separate plants."""
+        return np.asarray(csgraph.dijkstra(self.adjacency, directed=False, unweighted=True, indices=sections))
+
     @cached_property
     def pieces(self) -> int:
         """How many separate plants this network is."""

@@ -3,6 +3,11 @@
 A **quantity** is a linear functional of one section's outputs, states, inputs or moves. Over a horizon of T steps it
 becomes T rows (`controllers.rows`): outputs and states at t = 1..T, inputs and moves at t = 0..T−1, a move being
 u_t − u_{t−1} with u_{−1} what was written last.
+
+What several sections share, a common supply say, is one quantity with further **terms**, in other sections or of
+another kind; row k adds up every term at its own step k, so that a state at t = k + 1 meets an input at t = k. All
+sections of a quantity must lie in each other's locality: its price is everybody's business, and reaches nobody else.
+A hard limit on a sum holds for the plan; for the inputs applied it holds to within the residual of the solve.
 """
 
 from __future__ import annotations
@@ -31,6 +36,15 @@ class Of(Enum):
 
 
 @dataclass(frozen=True)
+class Term:
+    """One section's part of a quantity: coefficients `mix` over its outputs, states, inputs or moves."""
+
+    section: str
+    of: Of
+    mix: tuple[float, ...] = (1.0,)
+
+
+@dataclass(frozen=True)
 class Quantity:
     """One priced or limited quantity and its usual numbers, all in the network's units.
 
@@ -45,6 +59,7 @@ class Quantity:
         target: c.
         soft: [a, b], and `soft_price` s.
         hard: [lo, hi].
+        plus: what else is added to it, in this section or in others nearby.
     """
 
     name: str
@@ -58,14 +73,23 @@ class Quantity:
     soft: tuple[float, float] = (-inf, inf)
     soft_price: float = 0.0
     hard: tuple[float, float] = (-inf, inf)
+    plus: tuple[Term, ...] = ()
+
+    @property
+    def terms(self) -> tuple[Term, ...]:
+        """All that is added up, its own section's term first."""
+        return (Term(self.section, self.of, self.mix), *self.plus)
 
     def __post_init__(self) -> None:
         prices = np.atleast_1d(np.asarray(self.price, dtype=float))
         problems = (
-            (
-                not np.isfinite(self.mix).all() or not any(self.mix),
-                f"mix is {self.mix}",
-                "give finite coefficients, not all zero",
+            *(
+                (
+                    not np.isfinite(term.mix).all() or not any(term.mix),
+                    f"mix is {term.mix}" + (f" in section {term.section!r}" if term.section != self.section else ""),
+                    "give finite coefficients, not all zero",
+                )
+                for term in self.terms
             ),
             (not 0 < self.span < inf, f"span is {self.span}", "give a positive, finite span"),
             (not 0 < self.weight < inf, f"weight is {self.weight}", "give a positive, finite weight"),

@@ -24,7 +24,7 @@ from scipy import sparse
 from controllers.arrays import Floats, Ints
 from controllers.exceptions import RowError
 from controllers.network import Network
-from controllers.quantities import Of, Quantity
+from controllers.quantities import Of, Quantity, Term
 
 
 @dataclass(frozen=True)
@@ -155,6 +155,28 @@ class RowTable:
                 raise RowError(f"quantity {name!r}: hard limits {low!r} .. {high!r} are crossed; give lower <= upper")
         return replace(data, lower=lower, upper=upper)
 
+    def require_within_reach(self, locality: int) -> None:
+        """Check that every quantity's sections lie in each other's locality.
+
+        Raises:
+            RowError: names the quantity, two sections too far apart and the locality that would do.
+        """
+        for quantity in self.quantities:
+            if not quantity.plus:
+                continue
+            sections = [self.network.index(term.section) for term in quantity.terms]
+            distance = self.network.distances(np.array(sections))[:, sections]
+            one, other = np.unravel_index(int(distance.argmax()), distance.shape)
+            if distance[one, other] > locality:
+                near, far = quantity.terms[int(one)].section, quantity.terms[int(other)].section
+                apart = distance[one, other]
+                fix = f"set the locality to {apart:.0f} or split it" if np.isfinite(apart) else "split it"
+                raise RowError(
+                    f"quantity {quantity.name!r} adds up {near!r} and {far!r}, which lie "
+                    + (f"{apart:.0f} couplings apart" if np.isfinite(apart) else "in separate plants")
+                    + f", beyond the locality {locality}; {fix}"
+                )
+
     @cached_property
     def maps(self) -> tuple[sparse.csr_array, sparse.csr_array, sparse.csr_array]:
         """Qx (R, T n), Qu (R, T m), Qp (R, m): z = Qx x_{1..T} + Qu u_{0..T-1} + Qp u_{-1}, spans, time outermost."""
@@ -163,43 +185,45 @@ class RowTable:
         x_blocks, u_blocks, p_blocks = [], [], []
         eye, shift = sparse.eye_array(steps, format="csr"), sparse.eye_array(steps, k=-1, format="csr")
         first = sparse.csr_array(([1.0], ([0], [0])), shape=(steps, 1))
-        none_x, none_u = sparse.csr_array((steps, steps * n)), sparse.csr_array((steps, steps * m))
-        none_p = sparse.csr_array((steps, m))
         for quantity in self.quantities:
-            functional = _functional(net, quantity)
-            if quantity.of.ahead:
-                x_blocks.append(sparse.kron(eye, functional, format="csr"))
-                u_blocks.append(none_u)
-                p_blocks.append(none_p)
-                continue
-            moved = eye - shift if quantity.of is Of.MOVE else eye
-            x_blocks.append(none_x)
-            u_blocks.append(sparse.kron(moved, functional, format="csr"))
-            p_blocks.append(-sparse.kron(first, functional, format="csr") if quantity.of is Of.MOVE else none_p)
+            x, u = sparse.csr_array((steps, steps * n)), sparse.csr_array((steps, steps * m))
+            before = sparse.csr_array((steps, m))
+            for term in quantity.terms:
+                functional = _functional(net, term) / quantity.span
+                if term.of.ahead:
+                    x = x + sparse.kron(eye, functional, format="csr")
+                    continue
+                moved = eye - shift if term.of is Of.MOVE else eye
+                u = u + sparse.kron(moved, functional, format="csr")
+                before = before - sparse.kron(first, functional, format="csr") if term.of is Of.MOVE else before
+            x_blocks.append(x)
+            u_blocks.append(u)
+            p_blocks.append(before)
         stack = [sparse.csr_array(sparse.vstack(blocks, format="csr")) for blocks in (x_blocks, u_blocks, p_blocks)]
         return stack[0], stack[1], stack[2]
 
 
-def _functional(net: Network, quantity: Quantity) -> sparse.csr_array:
-    """(1, n) or (1, m) row vector that gives the quantity, in spans."""
-    i = net.index(quantity.section)
-    mix = np.asarray(quantity.mix)[None, :] / quantity.span
-    if quantity.of is Of.OUTPUT:
+def _functional(net: Network, term: Term) -> sparse.csr_array:
+    """(1, n) or (1, m) row vector that gives the term, in the network's units."""
+    i = net.index(term.section)
+    mix = np.asarray(term.mix, dtype=float)[None, :]
+    if term.of is Of.OUTPUT:
         return sparse.csr_array(sparse.csr_array(mix) @ net.c[net.y_at[i] : net.y_at[i + 1], :])
-    at, width = (net.x_at, net.a.shape[0]) if quantity.of is Of.STATE else (net.u_at, net.b.shape[1])
+    at, width = (net.x_at, net.a.shape[0]) if term.of is Of.STATE else (net.u_at, net.b.shape[1])
     columns = np.arange(at[i], at[i + 1])
     return sparse.csr_array((mix[0], (np.zeros(len(columns), dtype=int), columns)), shape=(1, width))
 
 
 def _check_sizes(network: Network, quantity: Quantity, horizon: int) -> None:
-    i = network.index(quantity.section)
-    at = {Of.OUTPUT: network.y_at, Of.STATE: network.x_at, Of.INPUT: network.u_at, Of.MOVE: network.u_at}[quantity.of]
-    have = int(at[i + 1] - at[i])
-    if len(quantity.mix) != have:
-        raise RowError(
-            f"quantity {quantity.name!r}: mix has {len(quantity.mix)} coefficients, but section "
-            f"{quantity.section!r} has {have} {quantity.of.value.replace('move', 'input')}s; give one each"
-        )
+    for term in quantity.terms:
+        i = network.index(term.section)
+        at = {Of.OUTPUT: network.y_at, Of.STATE: network.x_at, Of.INPUT: network.u_at, Of.MOVE: network.u_at}[term.of]
+        have = int(at[i + 1] - at[i])
+        if len(term.mix) != have:
+            raise RowError(
+                f"quantity {quantity.name!r}: mix has {len(term.mix)} coefficients, but section "
+                f"{term.section!r} has {have} {term.of.value.replace('move', 'input')}s; give one each"
+            )
     if np.ndim(quantity.price) == 1 and np.size(quantity.price) != horizon:
         raise RowError(
             f"quantity {quantity.name!r}: {np.size(quantity.price)} prices for {horizon} steps; "

@@ -109,10 +109,11 @@ class Design:
             settings: of the iteration.
 
         Raises:
-            RowError: a quantity does not fit the network.
+            RowError: a quantity does not fit the network or reaches beyond the locality.
             NotLocalizableError: some section cannot be confined to its locality; the message has the least that works.
         """
         table = RowTable.build(network, quantities, horizon)
+        table.require_within_reach(locality)
         responses = localized_responses(table, locality)
         require_localizable(table, responses)
         flat = _Flat.of(responses)
@@ -236,7 +237,7 @@ class Design:
         lower, upper = np.full_like(inputs, -np.inf), np.full_like(inputs, np.inf)
         for quantity in table.quantities:
             mixed = np.flatnonzero(quantity.mix)
-            if quantity.of is not Of.INPUT or len(mixed) != 1:
+            if quantity.of is not Of.INPUT or len(mixed) != 1 or quantity.plus:
                 continue
             row = table.rows_of(quantity.name).start
             k = int(net.u_at[net.index(quantity.section)] + mixed[0])

@@ -12,6 +12,7 @@ A graph is a number of sections and a list of pairs; `SHAPES` makes rows, trees,
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from dataclasses import replace
 from math import inf
 
 import numpy as np
@@ -201,18 +202,17 @@ def rows_of_trajectory(
     at = {Of.OUTPUT: network.y_at, Of.STATE: network.x_at, Of.INPUT: network.u_at, Of.MOVE: network.u_at}
     parts = []
     for quantity in quantities:
-        i = network.names.index(quantity.section)
-        own = seen[quantity.of][:, at[quantity.of][i] : at[quantity.of][i + 1]]
-        parts.append(own @ np.array(quantity.mix) / quantity.span)
+        total = np.zeros(len(inputs))
+        for term in quantity.terms:
+            i = network.names.index(term.section)
+            total += seen[term.of][:, at[term.of][i] : at[term.of][i + 1]] @ np.array(term.mix)
+        parts.append(total / quantity.span)
     return np.concatenate(parts)
 
 
 def unlimited(quantities: Sequence[Quantity]) -> list[Quantity]:
     """The same quantities without bands and limits."""
-    return [
-        Quantity(q.name, q.section, q.of, q.mix, q.span, q.weight, q.price, q.target, hard=(-inf, inf))
-        for q in quantities
-    ]
+    return [replace(q, soft=(-inf, inf), soft_price=0.0, hard=(-inf, inf)) for q in quantities]
 
 
 def _exact(a: Floats, b: Floats, e: Floats, x_at: Ints, ts_s: float) -> tuple[Floats, Floats, Floats]:
