@@ -3,7 +3,8 @@
 Problem. A plant of coupled sections (`network`) is to be driven to targets within limits (`quantities`, `rows`), every
 section using only what happens a few couplings away (`responses`), inside a sampling period (`synthesis`, loops in
 `kernels`). `linearise` makes the network from physics, `observer` the measurement, `central` the answer to compare
-with, and `spectrum` says whether the loop is stable. No clock, no I/O, no logging.
+with, and `spectrum` says whether the loop is stable.
+`terminal` prices what lies beyond the horizon, from where the plant will `rest`. No clock, no I/O, no logging.
 
     network -> quantities -> rows -> responses -> plans -> synthesis -> central, spectrum -> observer
 """
@@ -17,14 +18,17 @@ from controllers.exceptions import (
     ObserverError,
     ReferenceSolveError,
     RowError,
+    TerminalPriceError,
 )
 from controllers.network import Network
 from controllers.observer import Estimate, Noise, Observer
 from controllers.plans import Iterate, Measured, Outcome, Plan, Settings
 from controllers.quantities import Of, Quantity, Term
+from controllers.rest import Rest
 from controllers.row_rule import Region
 from controllers.rows import RowData, RowTable
 from controllers.synthesis import Design
+from controllers.terminal import terminal_quantities
 
 __all__ = [
     "ControllerError",
@@ -46,9 +50,12 @@ __all__ = [
     "Quantity",
     "ReferenceSolveError",
     "Region",
+    "Rest",
     "RowData",
     "RowError",
     "RowTable",
     "Settings",
     "Term",
+    "TerminalPriceError",
+    "terminal_quantities",
 ]

@@ -17,6 +17,10 @@ class RowError(ControllerError):
     """A quantity or its price, target or limit makes no sense."""
 
 
+class TerminalPriceError(ControllerError):
+    """What lies beyond the horizon has no price: no stabilising solution, no resting point, or an unfit override."""
+
+
 class NotLocalizableError(ControllerError):
     """Some section's response cannot be confined to its locality."""
 
