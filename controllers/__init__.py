@@ -4,11 +4,13 @@ Problem. A plant of coupled sections (`network`) is to be driven to targets with
 section using only what happens a few couplings away (`responses`), inside a sampling period (`synthesis`, loops in
 `kernels`). `linearise` makes the network from physics, `observer` the measurement, `central` the answer to compare
 with, and `spectrum` says whether the loop is stable.
-`terminal` prices what lies beyond the horizon, from where the plant will `rest`. No clock, no I/O, no logging.
+`terminal` prices what lies beyond the horizon, from where the plant will `rest`;
+`contradiction` names hard limits that cannot all be met. No clock, no I/O, no logging.
 
     network -> quantities -> rows -> responses -> plans -> synthesis -> central, spectrum -> observer
 """
 
+from controllers.contradiction import Contradiction, Limit, contradiction
 from controllers.exceptions import (
     ControllerError,
     EquilibriumError,
@@ -31,11 +33,13 @@ from controllers.synthesis import Design
 from controllers.terminal import terminal_quantities
 
 __all__ = [
+    "Contradiction",
     "ControllerError",
     "Design",
     "EquilibriumError",
     "Estimate",
     "Iterate",
+    "Limit",
     "Measured",
     "Network",
     "NetworkError",
@@ -57,5 +61,6 @@ __all__ = [
     "Settings",
     "Term",
     "TerminalPriceError",
+    "contradiction",
     "terminal_quantities",
 ]

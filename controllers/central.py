@@ -36,10 +36,19 @@ class QuadraticProgram:
     row_offset: Floats
 
 
-def assemble(table: RowTable, measured: Measured, data: RowData) -> QuadraticProgram:
-    """Write the whole-plant problem of one period as a quadratic program."""
+def dynamics(table: RowTable, measured: Measured) -> tuple[sparse.csr_array, Floats]:
+    """The plant over the horizon: a matrix over (x_{1..T}, u_{0..T-1}) and what it must give, (T n,)."""
     net, steps = table.network, table.horizon
     n = net.a.shape[0]
+    eye, shift = sparse.eye_array(steps, format="csr"), sparse.eye_array(steps, k=-1, format="csr")
+    states = sparse.kron(eye, sparse.eye_array(n)) - sparse.kron(shift, net.a)
+    driven = np.tile(net.e @ measured.w, steps)
+    driven[:n] += net.a @ measured.x
+    return sparse.csr_array(sparse.hstack([states, -sparse.kron(eye, net.b)], format="csr")), driven
+
+
+def assemble(table: RowTable, measured: Measured, data: RowData) -> QuadraticProgram:
+    """Write the whole-plant problem of one period as a quadratic program."""
     qx, qu, qp = table.maps
     banded = np.flatnonzero((data.soft_price > 0) & (np.isfinite(data.soft_lower) | np.isfinite(data.soft_upper)))
     pick = sparse.csr_array((np.ones(len(banded)), (np.arange(len(banded)), banded)), shape=(len(banded), table.count))
@@ -57,16 +66,8 @@ def assemble(table: RowTable, measured: Measured, data: RowData) -> QuadraticPro
     p = 2 * (z_map.T @ priced @ z_map + slack)
     g = 2 * z_map.T @ (data.price * (offset - data.target))
 
-    eye, shift = sparse.eye_array(steps, format="csr"), sparse.eye_array(steps, k=-1, format="csr")
-    dynamics = sparse.hstack(
-        [
-            sparse.kron(eye, sparse.eye_array(n)) - sparse.kron(shift, net.a),
-            -sparse.kron(eye, net.b),
-            sparse.csr_array((steps * n, len(banded))),
-        ]
-    )
-    driven = np.tile(net.e @ measured.w, steps)
-    driven[:n] += net.a @ measured.x
+    plant, driven = dynamics(table, measured)
+    plant = sparse.hstack([plant, sparse.csr_array((len(driven), len(banded)))], format="csr")
     hard = np.flatnonzero(np.isfinite(data.lower) | np.isfinite(data.upper))
     slack_map = sparse.hstack(
         [sparse.csr_array((len(banded), z_map.shape[1] - len(banded))), sparse.eye_array(len(banded))], format="csr"
@@ -75,9 +76,7 @@ def assemble(table: RowTable, measured: Measured, data: RowData) -> QuadraticPro
     return QuadraticProgram(
         p=sparse.csc_array(p),
         g=np.asarray(g),
-        k=sparse.csc_array(
-            sparse.vstack([dynamics, z_map[hard], band_map + slack_map, band_map - slack_map, slack_map])
-        ),
+        k=sparse.csc_array(sparse.vstack([plant, z_map[hard], band_map + slack_map, band_map - slack_map, slack_map])),
         lower=np.concatenate(
             [driven, (data.lower - offset)[hard], (data.soft_lower - offset)[banded], -nothing, np.zeros(len(banded))]
         ),

@@ -76,6 +76,8 @@ class Plan:
         region: for every input, at which limit its first value rests.
         primal: largest |z − y| of every section, (N,) in spans.
         change: largest change of y in the last pass of every section, (N,) in spans.
+        stalled: whether a solve that did not converge stood still in the end: most likely hard limits contradict each
+            other, and `controllers.contradiction` says which. That takes longer than a period has.
     """
 
     outcome: Outcome
@@ -85,6 +87,7 @@ class Plan:
     region: tuple[Region, ...]
     primal: Floats
     change: Floats
+    stalled: bool = False
 
     @property
     def residual(self) -> Floats:

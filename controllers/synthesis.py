@@ -34,7 +34,7 @@ column step makes it so; shifting a plan by one period undoes it, therefore the 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -47,6 +47,11 @@ from controllers.quantities import Of, Quantity
 from controllers.responses import Response, localized_responses, require_localizable
 from controllers.row_rule import Region
 from controllers.rows import RowData, RowTable
+
+STALL_LOOKS = 4
+"""Fewest looks at the residuals in either half of a solve that can be called stalled."""
+STALL_SHARE = 0.1
+"""Share of the primal residual below which the plan's change counts as standing still."""
 
 
 @dataclass(frozen=True)
@@ -194,6 +199,7 @@ class Design:
         z, y, l = start.z.copy(), start.y.copy(), start.l.copy()  # noqa: E741
         alpha, change = np.empty_like(y), np.zeros_like(y)
         done, outcome = 0, Outcome.OUT_OF_ITERATIONS
+        trail: list[tuple[float, float]] = []
         while done < most:
             count = min(settings.chunk, most - done)
             kernels.iterate(
@@ -204,13 +210,17 @@ class Design:
                 flat.touched, flat.at, flat.basis, flat.basis_at, flat.freedom,
             )  # fmt: skip
             done += count
-            if self._worst(z - y) <= settings.tolerance_spans and self._worst(change) <= settings.tolerance_spans:
+            trail.append((self._worst(z - y), self._worst(change)))
+            if max(trail[-1]) <= settings.tolerance_spans:
                 outcome = Outcome.CONVERGED
                 break
             if not may_continue(done):
                 outcome = Outcome.OUT_OF_TIME
                 break
-        return self._plan(z, y, change, data, done, outcome), Iterate(z, y, l)
+        plan = self._plan(z, y, change, data, done, outcome)
+        if plan.outcome in (Outcome.OUT_OF_TIME, Outcome.OUT_OF_ITERATIONS):
+            plan = replace(plan, stalled=_stalled(trail))
+        return plan, Iterate(z, y, l)
 
     def _plan(self, z: Floats, y: Floats, change: Floats, data: RowData, iterations: int, outcome: Outcome) -> Plan:
         table, root = self.table, np.sqrt(self.table.weight)
@@ -273,3 +283,19 @@ class Design:
         worst = np.zeros(table.network.size)
         np.maximum.at(worst, table.section, np.abs(spans))
         return worst
+
+
+def _stalled(trail: Sequence[tuple[float, float]]) -> bool:
+    """Whether the plan stands still and its copies stay apart, as they must where hard limits contradict each other.
+
+    Then z − y tends to a constant that is not zero, while without a contradiction it tends to zero together with the
+    change: Banjac, Goulart, Stellato and Boyd, J. Optim. Theory Appl. 183 (2019) 490-519.
+
+    Args:
+        trail: primal residual and change at every look, in spans.
+    """
+    half = len(trail) // 2
+    if half < STALL_LOOKS:
+        return False
+    earlier, later = (min(primal for primal, _ in part) for part in (trail[:half], trail[half:]))
+    return later > 0.9 * earlier and trail[-1][1] < STALL_SHARE * trail[-1][0]
