@@ -14,6 +14,7 @@ from controllers.contradiction import Contradiction, Limit, contradiction
 from controllers.exceptions import (
     ControllerError,
     EquilibriumError,
+    ForecastError,
     NetworkError,
     NotFiniteError,
     NotLocalizableError,
@@ -38,6 +39,7 @@ __all__ = [
     "Design",
     "EquilibriumError",
     "Estimate",
+    "ForecastError",
     "Iterate",
     "Limit",
     "Measured",

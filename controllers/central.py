@@ -42,7 +42,7 @@ def dynamics(table: RowTable, measured: Measured) -> tuple[sparse.csr_array, Flo
     n = net.a.shape[0]
     eye, shift = sparse.eye_array(steps, format="csr"), sparse.eye_array(steps, k=-1, format="csr")
     states = sparse.kron(eye, sparse.eye_array(n)) - sparse.kron(shift, net.a)
-    driven = np.tile(net.e @ measured.w, steps)
+    driven = (net.e @ np.broadcast_to(measured.w, (steps, net.e.shape[1])).T).T.reshape(-1)
     driven[:n] += net.a @ measured.x
     return sparse.csr_array(sparse.hstack([states, -sparse.kron(eye, net.b)], format="csr")), driven
 

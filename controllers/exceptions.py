@@ -25,6 +25,10 @@ class NotLocalizableError(ControllerError):
     """Some section's response cannot be confined to its locality."""
 
 
+class ForecastError(ControllerError):
+    """A forecast was handed to a design that holds its disturbances."""
+
+
 class NotFiniteError(ControllerError):
     """A number handed to a solve is not finite."""
 

@@ -21,13 +21,16 @@ def require_finite(table: RowTable, measured: Measured, data: RowData) -> None:
         ("disturbance", measured.w, net.w_at),
         ("last input", measured.u_before, net.u_at),
     ):
-        if values.shape != (at[-1],):
-            raise NotFiniteError(f"{what}s have shape {values.shape}; the network wants ({at[-1]},)")
-        bad = np.flatnonzero(~np.isfinite(values))
-        if len(bad):
-            section = net.names[int(np.searchsorted(at, bad[0], side="right") - 1)]
+        ahead = (table.horizon, int(at[-1]))
+        if values.shape != (at[-1],) and not (what == "disturbance" and values.shape == ahead):
+            also = f" or {ahead}" if what == "disturbance" else ""
+            raise NotFiniteError(f"{what}s have shape {values.shape}; the network wants ({at[-1]},){also}")
+        places = np.argwhere(~np.isfinite(values))
+        if len(places):
+            section = net.names[int(np.searchsorted(at, places[0][-1], side="right") - 1)]
             raise NotFiniteError(
-                f"{what} of section {section!r} is {values[bad[0]]}; hold the section or coast its estimate instead"
+                f"{what} of section {section!r} is {values[tuple(places[0])]}; "
+                "hold the section or coast its estimate instead"
             )
     for what, numbers, wrong in (
         ("price", data.price, ~np.isfinite(data.price)),

@@ -43,7 +43,10 @@ class Settings:
 
 @dataclass(frozen=True)
 class Measured:
-    """What one period starts from: states (n,), disturbances held over the horizon (r,), inputs written last (m,)."""
+    """What one period starts from: states (n,), disturbances, inputs written last (m,).
+
+    Disturbances are held over the horizon, (r,), or forecast for every step of it, (T, r), step t acting on x_{t+1}.
+    """
 
     x: Floats
     w: Floats

@@ -13,15 +13,18 @@ H_i p_i + N_i v: `gain` H_i (rows_i x p_i) is the particular one of least norm, 
 and spans everything the section is free to choose. Both are made once, before anything runs. Sections with the same
 matrices share one basis.
 
+With `forecast`, w_i is a sequence (T, r_i) instead of one held value, and R has T columns for each of its entries.
+
 `||M H − R||` above tolerance means that section cannot be localized at this d. With actuator lag the small singular
 values of M reach 1e-7 of the largest and are real, so rank is decided far below, on rows scaled to one, and the
-residual has the last word.
+residual has the last word. With `truncated`, a section that cannot be confined gives up its boundary rows: it plans as
+if everybody outside its locality stood still, feedback does the rest, and what leaks out is reported.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy import sparse
@@ -44,17 +47,21 @@ class Localizability:
         section: its name.
         locality: the d asked for.
         residual: relative residual of (3).
-        boundary: the section just outside that would feel most of it, None when localizable or when nothing is outside.
+        boundary: the section just outside that would feel most of it, None when confined or when nothing is outside.
+        leak: largest influence on a state just outside per unit of p_i, of the least response; 0 unless truncated.
+        leak_per_span: largest influence on a state just outside per span of what the section chooses freely on top.
     """
 
     section: str
     locality: int
     residual: float
     boundary: str | None
+    leak: float = 0.0
+    leak_per_span: float = 0.0
 
     @property
     def localizable(self) -> bool:
-        """Whether the residual is rounding."""
+        """Whether the residual of all rows that were kept is rounding."""
         return self.residual <= RESIDUAL_TOLERANCE
 
 
@@ -75,25 +82,36 @@ class Response:
     report: Localizability
 
 
-def localized_responses(table: RowTable, locality: int) -> tuple[Response, ...]:
-    """Compute H_i and N_i of every section; sections with equal matrices are computed once and share their arrays."""
+def localized_responses(
+    table: RowTable, locality: int, *, truncated: bool = False, forecast: bool = False
+) -> tuple[Response, ...]:
+    """Compute H_i and N_i of every section; sections with equal matrices are computed once and share their arrays.
+
+    Args:
+        table: the rows.
+        locality: d.
+        truncated: sections that cannot be confined give up their boundary rows instead.
+        forecast: p_i holds a disturbance of its own for every step.
+    """
     net = table.network
-    seen: dict[bytes, tuple[Floats, Floats, float, int]] = {}
+    seen: dict[bytes, _Solution] = {}
     responses = []
     for i, inside in enumerate(net.localities(locality)):
-        problem = _Problem.build(table, i, inside)
+        problem = _Problem.build(table, i, inside, forecast)
         key = problem.key()
         if key not in seen:
-            seen[key] = problem.solve()
-        gain, basis, residual, worst = seen[key]
-        outside = problem.outside[worst] if worst >= 0 else -1
-        named = net.names[outside] if outside >= 0 and residual > RESIDUAL_TOLERANCE else None
-        responses.append(Response(problem.rows, gain, basis, Localizability(net.names[i], locality, residual, named)))
+            seen[key] = problem.solve(truncated)
+        found = seen[key]
+        named = net.names[problem.outside[found.worst]] if found.worst >= 0 and not found.confined else None
+        report = Localizability(net.names[i], locality, found.residual, named, found.leak, found.leak_per_span)
+        responses.append(Response(problem.rows, found.gain, found.basis, report))
     return tuple(responses)
 
 
-def require_localizable(table: RowTable, responses: Sequence[Response], *, search_up_to: int = 8) -> None:
-    """Check that every section is confined.
+def require_localizable(
+    table: RowTable, responses: Sequence[Response], *, search_up_to: int = 8, forecast: bool = False
+) -> None:
+    """Check that every section is confined, or truncated.
 
     Raises:
         NotLocalizableError: names the sections, their boundary and the least locality that would do.
@@ -109,7 +127,7 @@ def require_localizable(table: RowTable, responses: Sequence[Response], *, searc
     ]
     if len(stuck) > 5:
         lines.append(f"and {len(stuck) - 5} more")
-    least = least_locality(table, d + 1, search_up_to)
+    least = least_locality(table, d + 1, search_up_to, forecast=forecast)
     fix = (
         f"set the locality to {least}"
         if least is not None
@@ -118,12 +136,28 @@ def require_localizable(table: RowTable, responses: Sequence[Response], *, searc
     raise NotLocalizableError("; ".join(lines) + f". Fix: {fix}")
 
 
-def least_locality(table: RowTable, start: int, stop: int) -> int | None:
+def least_locality(table: RowTable, start: int, stop: int, *, forecast: bool = False) -> int | None:
     """Smallest d in start..stop at which every section is localizable, None when none is."""
     for d in range(start, stop + 1):
-        if all(response.report.localizable for response in localized_responses(table, d)):
+        if all(response.report.localizable for response in localized_responses(table, d, forecast=forecast)):
             return d
     return None
+
+
+@dataclass(frozen=True)
+class _Solution:
+    """H, N, how well (3) holds, and which entry of `outside` feels most (−1: none)."""
+
+    gain: Floats
+    basis: Floats
+    residual: float
+    worst: int
+    leak: float = 0.0
+    leak_per_span: float = 0.0
+
+    @property
+    def confined(self) -> bool:
+        return self.residual <= RESIDUAL_TOLERANCE and self.leak == 0.0
 
 
 @dataclass(frozen=True)
@@ -139,7 +173,7 @@ class _Problem:
     qp: Floats
 
     @classmethod
-    def build(cls, table: RowTable, i: int, inside: Ints) -> _Problem:
+    def build(cls, table: RowTable, i: int, inside: Ints, forecast: bool) -> _Problem:
         net, steps = table.network, table.horizon
         xs, us = net.states_of(inside), net.inputs_of(inside)
         own_x = span_indices(net.x_at, np.array([i]))
@@ -150,7 +184,8 @@ class _Problem:
         e, e_out = net.e[xs][:, own_w].toarray(), net.e[outside_x][:, own_w].toarray()
         start = np.searchsorted(xs, own_x)
 
-        eye, shift, step = np.eye(steps), np.eye(steps, k=-1), np.ones((steps, 1))
+        eye, shift = np.eye(steps), np.eye(steps, k=-1)
+        step = eye if forecast else np.ones((steps, 1))
         first = np.eye(steps, 1)
         dynamics = np.hstack([np.kron(eye, np.eye(len(xs))) - np.kron(shift, a), -np.kron(eye, b)])
         boundary = np.hstack([np.kron(shift, a_out), np.kron(eye, b_out)])
@@ -177,20 +212,42 @@ class _Problem:
         shapes = repr([array.shape for array in (self.m, self.r, self.q, self.qp)]).encode()
         return shapes + b"".join(np.ascontiguousarray(array).tobytes() for array in (self.m, self.r, self.q, self.qp))
 
-    def solve(self) -> tuple[Floats, Floats, float, int]:
-        """Return H, N, the relative residual of (3), and which entry of `outside` feels most (−1: none)."""
-        length = np.linalg.norm(self.m, axis=1)
-        kept = length > 0
+    def solve(self, truncated: bool) -> _Solution:
+        """Solve (3) with its boundary rows; without them where it must be truncated."""
+        found, _ = self._solved(len(self.m))
+        if not truncated or found.residual <= RESIDUAL_TOLERANCE:
+            return found
+        inside = len(self.m) - len(self.boundary_section)
+        found, (particular, free) = self._solved(inside)
+        seen, values, mixing = np.linalg.svd(self.q @ free, full_matrices=False)
+        kept = values > 1e-10 * values.max(initial=0.0)
+        by_span = free @ (mixing[kept].T / values[kept])
+        least = particular - by_span @ (seen[:, kept].T @ (self.q @ particular + self.qp))
+        misfit = self.m @ least - self.r
+        per_span = self.m[inside:] @ by_span
+        return replace(
+            found,
+            worst=self._worst_outside(misfit),
+            leak=float(np.abs(misfit[inside:]).max(initial=0.0)),
+            leak_per_span=float(np.linalg.norm(per_span, axis=1).max(initial=0.0)),
+        )
+
+    def _solved(self, count: int) -> tuple[_Solution, tuple[Floats, Floats]]:
+        """Solve the first `count` rows of (3); also the least psi and the free ones, a column for each."""
+        length = np.linalg.norm(self.m[:count], axis=1)
+        kept = np.flatnonzero(length > 0)
         m, r = self.m[kept] / length[kept, None], self.r[kept] / length[kept, None]
         left, values, right = svd(m, full_matrices=True)
         rank = int((values > RANK_TOLERANCE * values[0]).sum())
         particular = right[:rank].T @ ((left[:, :rank].T @ r) / values[:rank, None])
-        misfit = self.m @ particular - self.r
+        misfit = self.m[:count] @ particular - self.r[:count]
         residual = float(np.abs(misfit).max(initial=0.0) / max(np.abs(self.r).max(initial=0.0), 1e-300))
         basis = _orthonormal(self.q @ right[rank:].T)
         gain = self.q @ particular + self.qp
         gain = gain - basis @ (basis.T @ gain)
-        return np.ascontiguousarray(gain), np.ascontiguousarray(basis), residual, self._worst_outside(misfit)
+        worst = self._worst_outside(misfit) if count == len(self.m) else -1
+        found = _Solution(np.ascontiguousarray(gain), np.ascontiguousarray(basis), residual, worst)
+        return found, (particular, right[rank:].T)
 
     def _worst_outside(self, misfit: Floats) -> int:
         felt = np.abs(misfit[len(misfit) - len(self.boundary_section) :]).max(axis=1, initial=0.0)

@@ -75,9 +75,14 @@ class Rest:
         return v[:n], v[n : n + m], -(net.a.T @ v[n + m :])
 
     def aim(self, data: RowData, w: Floats) -> RowData:
-        """Return `data` with the terminal quantities' targets at the resting point; everything else as it was."""
+        """Return `data` with the terminal quantities' targets at the resting point; everything else as it was.
+
+        Args:
+            data: row numbers of the period.
+            w: disturbances (r,), or a forecast (T, r), whose last step persists.
+        """
         net = self.table.network
-        x, u, slope = self.point(data, w)
+        x, u, slope = self.point(data, w[-1] if w.ndim == 2 else w)
         targets: dict[str, float] = {}
         by_section: dict[str, list[Quantity]] = {}
         for quantity in self.terminal:

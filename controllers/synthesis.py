@@ -40,11 +40,12 @@ import numpy as np
 
 from controllers import kernels
 from controllers.arrays import Floats, Ints
+from controllers.exceptions import ForecastError
 from controllers.finite import require_finite
 from controllers.network import Network
 from controllers.plans import Iterate, Measured, Outcome, Plan, Settings
 from controllers.quantities import Of, Quantity
-from controllers.responses import Response, localized_responses, require_localizable
+from controllers.responses import Localizability, Response, localized_responses, require_localizable
 from controllers.row_rule import Region
 from controllers.rows import RowData, RowTable
 
@@ -85,7 +86,17 @@ class _Flat:
 
 @dataclass(frozen=True)
 class Design:
-    """Everything that can be known before the first measurement; frozen, and safe to share between threads."""
+    """Everything that can be known before the first measurement; frozen, and safe to share between threads.
+
+    Attributes:
+        table: network, quantities and their rows.
+        locality: d.
+        settings: of the iteration.
+        responses: of every section.
+        copies: n.
+        flat: the responses as the kernels read them.
+        forecast: whether disturbances may differ from step to step.
+    """
 
     table: RowTable
     locality: int
@@ -93,6 +104,7 @@ class Design:
     responses: tuple[Response, ...]
     copies: Floats
     flat: _Flat
+    forecast: bool = False
 
     @classmethod
     def build(
@@ -103,6 +115,8 @@ class Design:
         horizon: int,
         locality: int,
         settings: Settings | None = None,
+        truncated: bool = False,
+        forecast: bool = False,
     ) -> Design:
         """Build the design of a plant.
 
@@ -112,6 +126,8 @@ class Design:
             horizon: T, in periods.
             locality: d, in couplings.
             settings: of the iteration.
+            truncated: let sections leak that cannot be confined; `leaks` says how much. Feedback does the rest.
+            forecast: accept disturbances (T, r) as well as (r,); the responses hold T times as many columns for them.
 
         Raises:
             RowError: a quantity does not fit the network or reaches beyond the locality.
@@ -119,11 +135,24 @@ class Design:
         """
         table = RowTable.build(network, quantities, horizon)
         table.require_within_reach(locality)
-        responses = localized_responses(table, locality)
-        require_localizable(table, responses)
+        responses = localized_responses(table, locality, truncated=truncated, forecast=forecast)
+        require_localizable(table, responses, forecast=forecast)
+        return cls.assemble(table, locality, settings or Settings(), responses, forecast=forecast)
+
+    @classmethod
+    def assemble(
+        cls, table: RowTable, locality: int, settings: Settings, responses: Sequence[Response], *, forecast: bool
+    ) -> Design:
+        """Put a design together from responses that were computed before."""
         flat = _Flat.of(responses)
         copies = np.bincount(flat.touched, minlength=table.count).astype(float)
-        return cls(table, locality, settings or Settings(), responses, copies, flat)
+        return cls(table, locality, settings, tuple(responses), copies, flat, forecast)
+
+    @property
+    def leaks(self) -> tuple[Localizability, ...]:
+        """Reports of the sections that were truncated, worst first; empty when every section is confined."""
+        leaking = [response.report for response in self.responses if response.report.leak > 0]
+        return tuple(sorted(leaking, key=lambda report: -report.leak))
 
     def data(self) -> RowData:
         """Return the usual prices, targets and limits, in spans."""
@@ -133,11 +162,13 @@ class Design:
         """Return y0, the plan that answers the measurement with least norm, weighted rows (R,)."""
         net = self.table.network
         y = np.zeros(self.table.count)
+        steps = self.table.horizon if self.forecast else 1
+        w = np.broadcast_to(measured.w, (steps, net.e.shape[1]))
         for i, response in enumerate(self.responses):
             p = np.concatenate(
                 [
                     measured.x[net.x_at[i] : net.x_at[i + 1]],
-                    measured.w[net.w_at[i] : net.w_at[i + 1]],
+                    w[:, net.w_at[i] : net.w_at[i + 1]].reshape(-1),
                     measured.u_before[net.u_at[i] : net.u_at[i + 1]],
                 ]
             )
@@ -182,9 +213,12 @@ class Design:
 
         Raises:
             NotFiniteError: a measurement, price or target is not finite, or a limit is NaN.
+            ForecastError: the disturbances are a forecast, and the design was built without.
         """
         data = self.data() if data is None else data
         require_finite(self.table, measured, data)
+        if measured.w.ndim == 2 and not self.forecast:
+            raise ForecastError("disturbances differ from step to step; build the design with forecast=True")
         y0 = self.free_response(measured)
         start = (
             Iterate(y0.copy(), y0, np.zeros_like(y0)) if before is None or not before.finite else self.warm(y0, before)

@@ -185,10 +185,10 @@ def anywhere(network: Network, rng: np.random.Generator, size: float = 1.0) -> M
 
 
 def trajectory(network: Network, x: Floats, w: Floats, inputs: Floats) -> Floats:
-    """Simulate (1) step by step; inputs (T, m), returns states (T, n) at t = 1..T."""
+    """Simulate (1) step by step; inputs (T, m), w (r,) or (T, r), returns states (T, n) at t = 1..T."""
     states = []
-    for u in inputs:
-        x = network.a @ x + network.b @ u + network.e @ w
+    for u, now in zip(inputs, np.broadcast_to(w, (len(inputs), network.e.shape[1])), strict=True):
+        x = network.a @ x + network.b @ u + network.e @ now
         states.append(x)
     return np.array(states)
 

@@ -119,3 +119,11 @@ def test_a_plant_that_cannot_rest_is_refused() -> None:
     table = RowTable.build(network, [Quantity("x", "one", Of.STATE, (1.0, 0.0), price=1.0)], 3)
     with pytest.raises(TerminalPriceError, match=r"the plant has no resting point .*needs an input that stops it"):
         Rest.build(table, ())
+
+
+def test_the_last_step_of_a_forecast_is_what_persists() -> None:
+    """A forecast is aimed like its last value held."""
+    network = zones(row(3))
+    table, rest = ended(network, zone_quantities(network), 4)
+    w = np.random.default_rng(0).normal(size=(4, 3))
+    assert (rest.aim(table.data(), w).target == rest.aim(table.data(), w[-1]).target).all()
