@@ -5,11 +5,12 @@ section using only what happens a few couplings away (`responses`), inside a sam
 `kernels`). `linearise` makes the network from physics, `observer` the measurement, `central` the answer to compare
 with, and `spectrum` says whether the loop is stable.
 `terminal` prices what lies beyond the horizon, from where the plant will `rest`;
-`contradiction` names hard limits that cannot all be met. No clock, no I/O, no logging.
+`contradiction` names hard limits that cannot all be met, `advice` what a plant lacks. No clock, no I/O, no logging.
 
     network -> quantities -> rows -> responses -> plans -> synthesis -> central, spectrum -> observer
 """
 
+from controllers.advice import About, Finding, advice
 from controllers.contradiction import Contradiction, Limit, contradiction
 from controllers.exceptions import (
     ControllerError,
@@ -34,11 +35,13 @@ from controllers.synthesis import Design
 from controllers.terminal import terminal_quantities
 
 __all__ = [
+    "About",
     "Contradiction",
     "ControllerError",
     "Design",
     "EquilibriumError",
     "Estimate",
+    "Finding",
     "ForecastError",
     "Iterate",
     "Limit",
@@ -63,6 +66,7 @@ __all__ = [
     "Settings",
     "Term",
     "TerminalPriceError",
+    "advice",
     "contradiction",
     "terminal_quantities",
 ]

@@ -148,6 +148,11 @@ class Network:
         """How many separate plants this network is."""
         return int(csgraph.connected_components(self.adjacency, directed=False, return_labels=False))
 
+    @cached_property
+    def piece_of(self) -> Ints:
+        """(N,) which of the separate plants, 0..pieces−1, every section belongs to."""
+        return np.asarray(csgraph.connected_components(self.adjacency, directed=False)[1], dtype=np.int64)
+
     def states_of(self, sections: Ints) -> Ints:
         """Positions in x of all states of these sections."""
         return span_indices(self.x_at, sections)
@@ -184,7 +189,8 @@ def _block_pattern(matrix: sparse.csr_array, row_at: Ints, column_at: Ints) -> s
 
 
 def _block_offsets(what: str, names: tuple[str, ...], sizes: Mapping[str, int]) -> Ints:
-    unknown = [name for name in sizes if name not in names]
+    known = set(names)
+    unknown = [name for name in sizes if name not in known]
     if unknown:
         raise NetworkError(f"{what}: {unknown[0]!r} is not a section; sections are named by `states`")
     counts = [sizes.get(name, 0) for name in names]

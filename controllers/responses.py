@@ -30,6 +30,7 @@ import numpy as np
 from scipy import sparse
 from scipy.linalg import svd
 
+from controllers.advice import nearest_actuator
 from controllers.arrays import Floats, Ints
 from controllers.exceptions import NotLocalizableError
 from controllers.network import Network, span_indices
@@ -128,12 +129,24 @@ def require_localizable(
     if len(stuck) > 5:
         lines.append(f"and {len(stuck) - 5} more")
     least = least_locality(table, d + 1, search_up_to, forecast=forecast)
-    fix = (
-        f"set the locality to {least}"
-        if least is not None
-        else "no locality helps: some section lacks an actuator within reach"
-    )
+    fix = f"set the locality to {least}" if least is not None else _lacking(table.network, stuck, search_up_to)
     raise NotLocalizableError("; ".join(lines) + f". Fix: {fix}")
+
+
+def _lacking(network: Network, stuck: Sequence[Localizability], reach: int) -> str:
+    """Why no locality helps, by name."""
+    away = nearest_actuator(network)
+    far = [i for i in range(network.size) if away[i] > reach]
+    if not far:
+        boundary = f" before {stuck[0].boundary!r} feels it" if stuck[0].boundary else ""
+        return (
+            f"no locality helps: {stuck[0].section!r} has too few inputs near it to stop what its states do{boundary}"
+        )
+    others = f" and {len(far) - 1} more" if len(far) > 1 else ""
+    there = f"nearest {away[far[0]]:.0f} couplings away" if np.isfinite(away[far[0]]) else "its plant has none at all"
+    return (
+        f"no locality helps: some section lacks an actuator within reach: {network.names[far[0]]!r}{others} ({there})"
+    )
 
 
 def least_locality(table: RowTable, start: int, stop: int, *, forecast: bool = False) -> int | None:
