@@ -5,7 +5,8 @@ section using only what happens a few couplings away (`responses`), inside a sam
 `kernels`). `linearise` makes the network from physics, `observer` the measurement, `central` the answer to compare
 with, and `spectrum` says whether the loop is stable.
 `terminal` prices what lies beyond the horizon, from where the plant will `rest`;
-`contradiction` names hard limits that cannot all be met, `advice` what a plant lacks. No clock, no I/O, no logging.
+`contradiction` names hard limits that cannot all be met, `advice` what a plant lacks;
+`storage` keeps a design between runs. No clock, no I/O, no logging.
 
     network -> quantities -> rows -> responses -> plans -> synthesis -> central, spectrum -> observer
 """
@@ -22,6 +23,7 @@ from controllers.exceptions import (
     ObserverError,
     ReferenceSolveError,
     RowError,
+    StoredDesignError,
     TerminalPriceError,
 )
 from controllers.network import Network
@@ -31,6 +33,7 @@ from controllers.quantities import Of, Quantity, Term
 from controllers.rest import Rest
 from controllers.row_rule import Region
 from controllers.rows import RowData, RowTable
+from controllers.storage import pack, unpack
 from controllers.synthesis import Design
 from controllers.terminal import terminal_quantities
 
@@ -64,9 +67,12 @@ __all__ = [
     "RowError",
     "RowTable",
     "Settings",
+    "StoredDesignError",
     "Term",
     "TerminalPriceError",
     "advice",
     "contradiction",
+    "pack",
     "terminal_quantities",
+    "unpack",
 ]

@@ -39,3 +39,7 @@ class ObserverError(ControllerError):
 
 class ReferenceSolveError(ControllerError):
     """The whole-plant reference problem was not solved."""
+
+
+class StoredDesignError(ControllerError):
+    """Bytes that should hold a design do not: another format or version, damaged, or contradicting themselves."""
