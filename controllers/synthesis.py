@@ -34,25 +34,20 @@ column step makes it so; shifting a plan by one period undoes it, therefore the 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
 from controllers import kernels
 from controllers.arrays import Floats, Ints
+from controllers.ending import plan_of
 from controllers.exceptions import ForecastError
 from controllers.finite import require_finite
 from controllers.network import Network
 from controllers.plans import Iterate, Measured, Outcome, Plan, Settings
-from controllers.quantities import Of, Quantity
+from controllers.quantities import Quantity
 from controllers.responses import Localizability, Response, localized_responses, require_localizable
-from controllers.row_rule import Region
 from controllers.rows import RowData, RowTable
-
-STALL_LOOKS = 4
-"""Fewest looks at the residuals in either half of a solve that can be called stalled."""
-STALL_SHARE = 0.1
-"""Share of the primal residual below which the plan's change counts as standing still."""
 
 
 @dataclass(frozen=True)
@@ -233,7 +228,7 @@ class Design:
         z, y, l = start.z.copy(), start.y.copy(), start.l.copy()  # noqa: E741
         alpha, change = np.empty_like(y), np.zeros_like(y)
         done, outcome = 0, Outcome.OUT_OF_ITERATIONS
-        trail: list[tuple[float, float]] = []
+        looks: list[tuple[float, float]] = []
         while done < most:
             count = min(settings.chunk, most - done)
             kernels.iterate(
@@ -244,57 +239,14 @@ class Design:
                 flat.touched, flat.at, flat.basis, flat.basis_at, flat.freedom,
             )  # fmt: skip
             done += count
-            trail.append((self._worst(z - y), self._worst(change)))
-            if max(trail[-1]) <= settings.tolerance_spans:
+            looks.append((self._worst(z - y), self._worst(change)))
+            if all(residual <= settings.tolerance_spans for residual in looks[-1]):
                 outcome = Outcome.CONVERGED
                 break
             if not may_continue(done):
                 outcome = Outcome.OUT_OF_TIME
                 break
-        plan = self._plan(z, y, change, data, done, outcome)
-        if plan.outcome in (Outcome.OUT_OF_TIME, Outcome.OUT_OF_ITERATIONS):
-            plan = replace(plan, stalled=_stalled(trail))
-        return plan, Iterate(z, y, l)
-
-    def _plan(self, z: Floats, y: Floats, change: Floats, data: RowData, iterations: int, outcome: Outcome) -> Plan:
-        table, root = self.table, np.sqrt(self.table.weight)
-        rows = np.clip(z / root, data.lower, data.upper)
-        finite = bool(np.isfinite(rows).all() and np.isfinite(y).all())
-        inputs, region = self._first_inputs(rows, data)
-        return Plan(
-            outcome=outcome if finite else Outcome.NOT_FINITE,
-            iterations=iterations,
-            rows=rows,
-            inputs=inputs if finite else np.full_like(inputs, np.nan),
-            region=region,
-            primal=self._by_section((z - y) / root, table),
-            change=self._by_section(change / root, table),
-        )
-
-    def _first_inputs(self, rows: Floats, data: RowData) -> tuple[Floats, tuple[Region, ...]]:
-        """First value of every input that is a quantity by itself, and which limit it rests on.
-
-        An input that several quantities show takes the first one's value, inside the limits of all.
-        """
-        net, table = self.table.network, self.table
-        inputs = np.full(net.b.shape[1], np.nan)
-        lower, upper = np.full_like(inputs, -np.inf), np.full_like(inputs, np.inf)
-        for quantity in table.quantities:
-            mixed = np.flatnonzero(quantity.mix)
-            if quantity.of is not Of.INPUT or len(mixed) != 1 or quantity.plus:
-                continue
-            row = table.rows_of(quantity.name).start
-            k = int(net.u_at[net.index(quantity.section)] + mixed[0])
-            unit = quantity.span / quantity.mix[mixed[0]]
-            low, high = sorted((data.lower[row] * unit, data.upper[row] * unit))
-            lower[k], upper[k] = max(lower[k], low), min(upper[k], high)
-            inputs[k] = rows[row] * unit if np.isnan(inputs[k]) else inputs[k]
-        inputs = np.clip(inputs, lower, upper)
-        at_lower, at_upper = inputs <= lower, inputs >= upper
-        return inputs, tuple(
-            Region.LOWER if low else Region.UPPER if high else Region.FREE
-            for low, high in zip(at_lower, at_upper, strict=True)
-        )
+        return plan_of(self.table, z, y, change, data, done, outcome, looks), Iterate(z, y, l)
 
     def _weighted(self, data: RowData) -> RowData:
         """Scale row numbers from spans to weighted rows: f(z) is the same number in both."""
@@ -311,25 +263,3 @@ class Design:
 
     def _worst(self, weighted: Floats) -> float:
         return float(np.max(np.abs(weighted) / np.sqrt(self.table.weight)))
-
-    @staticmethod
-    def _by_section(spans: Floats, table: RowTable) -> Floats:
-        worst = np.zeros(table.network.size)
-        np.maximum.at(worst, table.section, np.abs(spans))
-        return worst
-
-
-def _stalled(trail: Sequence[tuple[float, float]]) -> bool:
-    """Whether the plan stands still and its copies stay apart, as they must where hard limits contradict each other.
-
-    Then z − y tends to a constant that is not zero, while without a contradiction it tends to zero together with the
-    change: Banjac, Goulart, Stellato and Boyd, J. Optim. Theory Appl. 183 (2019) 490-519.
-
-    Args:
-        trail: primal residual and change at every look, in spans.
-    """
-    half = len(trail) // 2
-    if half < STALL_LOOKS:
-        return False
-    earlier, later = (min(primal for primal, _ in part) for part in (trail[:half], trail[half:]))
-    return later > 0.9 * earlier and trail[-1][1] < STALL_SHARE * trail[-1][0]
