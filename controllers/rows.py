@@ -180,38 +180,52 @@ class RowTable:
     @cached_property
     def maps(self) -> tuple[sparse.csr_array, sparse.csr_array, sparse.csr_array]:
         """Qx (R, T n), Qu (R, T m), Qp (R, m): z = Qx x_{1..T} + Qu u_{0..T-1} + Qp u_{-1}, spans, time outermost."""
-        net, steps = self.network, self.horizon
+        net, steps = self.network, np.arange(self.horizon)[:, None]
         n, m = net.a.shape[0], net.b.shape[1]
-        x_blocks, u_blocks, p_blocks = [], [], []
-        eye, shift = sparse.eye_array(steps, format="csr"), sparse.eye_array(steps, k=-1, format="csr")
-        first = sparse.csr_array(([1.0], ([0], [0])), shape=(steps, 1))
-        for quantity in self.quantities:
-            x, u = sparse.csr_array((steps, steps * n)), sparse.csr_array((steps, steps * m))
-            before = sparse.csr_array((steps, m))
+        on_x, on_u, on_before = _Entries(), _Entries(), _Entries()
+        for k, quantity in enumerate(self.quantities):
+            row = k * self.horizon + steps
             for term in quantity.terms:
-                functional = _functional(net, term) / quantity.span
+                columns, mix = _functional(net, term)
+                mix = mix / quantity.span
                 if term.of.ahead:
-                    x = x + sparse.kron(eye, functional, format="csr")
+                    on_x.add(row, steps * n + columns, mix)
                     continue
-                moved = eye - shift if term.of is Of.MOVE else eye
-                u = u + sparse.kron(moved, functional, format="csr")
-                before = before - sparse.kron(first, functional, format="csr") if term.of is Of.MOVE else before
-            x_blocks.append(x)
-            u_blocks.append(u)
-            p_blocks.append(before)
-        stack = [sparse.csr_array(sparse.vstack(blocks, format="csr")) for blocks in (x_blocks, u_blocks, p_blocks)]
-        return stack[0], stack[1], stack[2]
+                on_u.add(row, steps * m + columns, mix)
+                if term.of is Of.MOVE:
+                    on_u.add(row[1:], steps[:-1] * m + columns, -mix)
+                    on_before.add(row[:1], columns, -mix)
+        shapes = ((self.count, self.horizon * n), (self.count, self.horizon * m), (self.count, m))
+        x, u, before = (part.matrix(shape) for part, shape in zip((on_x, on_u, on_before), shapes, strict=True))
+        return x, u, before
 
 
-def _functional(net: Network, term: Term) -> sparse.csr_array:
-    """(1, n) or (1, m) row vector that gives the term, in the network's units."""
-    i = net.index(term.section)
-    mix = np.asarray(term.mix, dtype=float)[None, :]
+class _Entries:
+    """Entries of a sparse matrix as they come; those in the same place are added."""
+
+    def __init__(self) -> None:
+        self._rows, self._columns, self._values = ([np.zeros(0, dtype=np.int64)] for _ in range(3))
+
+    def add(self, rows: Ints, columns: Ints, values: Floats) -> None:
+        shape = np.broadcast_shapes(rows.shape, columns.shape)
+        for kept, part in zip((self._rows, self._columns, self._values), (rows, columns, values), strict=True):
+            kept.append(np.broadcast_to(part, shape).reshape(-1))
+
+    def matrix(self, shape: tuple[int, int]) -> sparse.csr_array:
+        places = (np.concatenate(self._rows), np.concatenate(self._columns))
+        out = sparse.csr_array((np.concatenate(self._values), places), shape=shape, dtype=float)
+        out.eliminate_zeros()
+        return out
+
+
+def _functional(net: Network, term: Term) -> tuple[Ints, Floats]:
+    """Positions in x or u, and their coefficients, that give the term in the network's units."""
+    i, mix = net.index(term.section), np.asarray(term.mix, dtype=float)
     if term.of is Of.OUTPUT:
-        return sparse.csr_array(sparse.csr_array(mix) @ net.c[net.y_at[i] : net.y_at[i + 1], :])
-    at, width = (net.x_at, net.a.shape[0]) if term.of is Of.STATE else (net.u_at, net.b.shape[1])
-    columns = np.arange(at[i], at[i + 1])
-    return sparse.csr_array((mix[0], (np.zeros(len(columns), dtype=int), columns)), shape=(1, width))
+        row = sparse.csr_array(mix[None, :]) @ net.c[net.y_at[i] : net.y_at[i + 1], :]
+        return row.indices.astype(np.int64), np.asarray(row.data)
+    at = net.x_at if term.of is Of.STATE else net.u_at
+    return np.arange(at[i], at[i + 1]), mix
 
 
 def _check_sizes(network: Network, quantity: Quantity, horizon: int) -> None:

@@ -41,7 +41,7 @@ import numpy as np
 from controllers import kernels
 from controllers.arrays import Floats, Ints
 from controllers.ending import plan_of
-from controllers.exceptions import ForecastError
+from controllers.exceptions import ForecastError, RowError
 from controllers.finite import require_finite
 from controllers.network import Network
 from controllers.plans import Iterate, Measured, Outcome, Plan, Settings
@@ -138,9 +138,18 @@ class Design:
     def assemble(
         cls, table: RowTable, locality: int, settings: Settings, responses: Sequence[Response], *, forecast: bool
     ) -> Design:
-        """Put a design together from responses that were computed before."""
+        """Put a design together from responses that were computed before.
+
+        Raises:
+            RowError: a quantity shows nothing of the plant, so that no response touches its rows.
+        """
         flat = _Flat.of(responses)
         copies = np.bincount(flat.touched, minlength=table.count).astype(float)
+        if not copies.all():
+            blind = table.quantities[int(copies.argmin()) // table.horizon]
+            raise RowError(
+                f"quantity {blind.name!r} shows nothing of the plant, its coefficients meet only zeros; drop it"
+            )
         return cls(table, locality, settings, tuple(responses), copies, flat, forecast)
 
     @property

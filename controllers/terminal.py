@@ -58,9 +58,10 @@ def terminal_quantities(
     for quantity in quantities:
         if all(term.section == quantity.section for term in quantity.terms):
             own[quantity.section].append(quantity)
+    seen: dict[bytes, Floats] = {}
     out = []
     for i, name in enumerate(network.names):
-        p = _overridden(network, i, given[name]) if name in given else _riccati(network, i, own[name])
+        p = _overridden(network, i, given[name]) if name in given else _riccati(network, i, own[name], seen)
         price = (0.0,) * (horizon - 1) + (1.0,)
         for k, mix in enumerate(_factor(p)):
             x, u = mix[: network.x_at[i + 1] - network.x_at[i]], mix[network.x_at[i + 1] - network.x_at[i] :]
@@ -74,14 +75,23 @@ def terminal_quantities(
     return tuple(out)
 
 
-def _riccati(network: Network, i: int, quantities: Sequence[Quantity]) -> Floats:
-    """P_i over (x_i, u_i(−1))."""
+def _riccati(network: Network, i: int, quantities: Sequence[Quantity], seen: dict[bytes, Floats]) -> Floats:
+    """P_i over (x_i, u_i(−1)), solved once for sections that are alike."""
     a, b, c = _own(network, i)
     n, m = b.shape
     stages = [_stage(quantity, a, b, c) for quantity in quantities if np.atleast_1d(quantity.price)[-1] > 0]
     if not stages:
         return np.zeros((n + m, n + m))
     on_state, on_input = (np.array(parts) for parts in zip(*stages, strict=True))
+    key = repr((n, m, len(stages))).encode() + b"".join(part.tobytes() for part in (a, b, on_state, on_input))
+    if key not in seen:
+        seen[key] = _solved(network.names[i], a, b, on_state, on_input)
+    return seen[key]
+
+
+def _solved(name: str, a: Floats, b: Floats, on_state: Floats, on_input: Floats) -> Floats:
+    """P of one section from its matrices and the rows C, D of its prices."""
+    n, m = b.shape
     wide_a = np.zeros((n + m, n + m))
     wide_a[:n, :n] = a
     q, r, s = on_state.T @ on_state, on_input.T @ on_input, on_state.T @ on_input
@@ -94,7 +104,7 @@ def _riccati(network: Network, i: int, quantities: Sequence[Quantity]) -> Floats
             p = solve_discrete_are(wide_a, np.vstack([b, np.eye(m)]), q, r, s=s)
     except (LinAlgError, ValueError) as error:
         raise TerminalPriceError(
-            f"section {network.names[i]!r} has no terminal price of its own ({error}); "
+            f"section {name!r} has no terminal price of its own ({error}); "
             "price what its inputs and unstable states do, or override it with a matrix, or with None for no price"
         ) from error
     return np.asarray(p + p.T) / 2

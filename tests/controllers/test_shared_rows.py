@@ -156,3 +156,14 @@ def test_a_term_that_does_not_fit_is_refused(term: Term, error: type[Exception],
     """Every term is checked like a quantity's own."""
     with pytest.raises(error, match=message):
         RowTable.build(zones(row(3)), [Quantity("sum", "zone-1", Of.INPUT, plus=(term,))], 4)
+
+
+def test_a_quantity_that_shows_nothing_is_refused() -> None:
+    """An output that reads no state, or terms that cancel, make no row to iterate on: refused by name."""
+    network = Network.from_matrices([[0.5]], [[1.0]], states={"one": 1}, c=[[0.0]])
+    blind = Quantity("blind", "one", Of.OUTPUT)
+    nought = Quantity("nought", "one", Of.STATE, plus=(Term("one", Of.STATE, (-1.0,)),))
+    good = Quantity("x", "one", Of.STATE, price=1.0)
+    for quantity in (blind, nought):
+        with pytest.raises(RowError, match=f"quantity '{quantity.name}' shows nothing of the plant"):
+            Design.build(network, [good, quantity], horizon=3, locality=0)

@@ -205,7 +205,7 @@ def spoiled(array: npt.NDArray[Any], value: float) -> npt.NDArray[Any]:
         (other("a_data", lambda data: spoiled(data, np.nan)), "every entry must be finite"),
         (other("a_indices", lambda indices: indices + 99), "incomplete"),
         (told(names=lambda names: names[:-1]), "incomplete"),
-        (told(horizon=lambda _: 5), "no response touches row 40 of 50"),
+        (told(horizon=lambda _: 5), "quantity 'zone-5.temperature' shows nothing of the plant"),
         (told(forecast=lambda _: True), "has shapes"),
         (told(quantities=lambda quantities: quantities[:-1]), "not rows of the table"),
         (told(quantities=lambda quantities: quantities[::-1]), "not in the order of their sections"),

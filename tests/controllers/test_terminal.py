@@ -221,3 +221,16 @@ def test_a_section_that_runs_away_has_no_price_of_its_own(inputs: int) -> None:
     with pytest.raises(TerminalPriceError, match=r"section 'one' has no terminal price of its own .*override it with"):
         terminal_quantities(network, quantities, 3)
     assert terminal_quantities(network, quantities, 3, override={"one": None}) == ()
+
+
+def test_sections_that_are_alike_get_the_same_prices_and_others_their_own() -> None:
+    """Equal tanks end alike; a tank with other numbers or other prices does not."""
+    network = tanks((4, []))
+    quantities = tank_quantities(network)
+    dearer = [replace(q, price=2.0) if q.name == "tank-3.level" else q for q in quantities]
+    mixes = [
+        [(term.of, term.mix) for q in terminal_quantities(network, dearer, 3) if q.section == name for term in q.terms]
+        for name in network.names
+    ]
+    assert mixes[0] == mixes[1] == mixes[3]
+    assert mixes[2] != mixes[0]

@@ -24,6 +24,7 @@ import numpy as np
 from numba import njit
 
 from controllers.arrays import Floats, Ints
+from controllers.ending import first_inputs
 from controllers.plans import Measured
 from controllers.row_rule import row_rule
 from controllers.rows import RowData
@@ -205,7 +206,7 @@ def curves(contest: Contest, stretch: Stretch, accuracy: float, *, rho: float = 
     passes, error = None, np.inf
     for tried in (10 * 2**k for k in range(8)):
         weighted_rows, _ = run(maps, value, limited, tried)
-        inputs, _ = design._first_inputs(weighted_rows / np.sqrt(design.table.weight), data)
+        inputs, _ = first_inputs(design.table, weighted_rows / np.sqrt(design.table.weight), data)
         error = contest.error_spans(inputs, stretch.truth)
         if error <= accuracy:
             passes = tried

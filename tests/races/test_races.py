@@ -12,6 +12,7 @@ import pytest
 from click.testing import CliRunner
 
 from controllers.central import solve_central
+from controllers.ending import first_inputs
 from controllers.quantities import Of
 from tests.races.calibrate import Calibrated, Patience, calibrate
 from tests.races.command import main
@@ -119,7 +120,7 @@ def test_published_form_finds_the_same_inputs(kind: str) -> None:
     value = maps.values(stretch.measured)
     explicit = Explicit(maps, value, weighted, 1.0, limited=True)
     rows, _ = run(maps, value, explicit, 1500)
-    inputs, _ = design._first_inputs(rows / np.sqrt(design.table.weight), stretch.data)
+    inputs, _ = first_inputs(design.table, rows / np.sqrt(design.table.weight), stretch.data)
     assert contest.error_spans(inputs, stretch.truth) <= 1e-2
     copy = np.random.default_rng(0).normal(size=len(value))
     np.testing.assert_allclose(BySolver(maps, value, weighted, 1.0)(copy), explicit(copy), rtol=0, atol=1e-5)
