@@ -3,16 +3,15 @@
 Problem. A plant of coupled sections (`network`) is to be driven to targets within limits (`quantities`, `rows`), every
 section using only what happens a few couplings away (`responses`), inside a sampling period (`synthesis`, loops in
 `kernels`). `linearise` makes the network from physics, `observer` the measurement, `central` the answer to compare
-with, and `spectrum` says whether the loop is stable.
-`terminal` prices what lies beyond the horizon, from where the plant will `rest`;
-`contradiction` names hard limits that cannot all be met, `advice` what a plant lacks;
-`storage` keeps a design between runs. No clock, no I/O, no logging.
+with, and `spectrum` says whether the loop is stable. `terminal` prices what lies beyond the horizon, counted from where
+the plant will `rest`; `contradiction` names hard limits that cannot all be met, `advice` what a plant lacks; `storage`
+turns a design into bytes and back. No clock, no I/O, no logging.
 
     network -> quantities -> rows -> responses -> plans -> synthesis -> central, spectrum -> observer
 """
 
-from controllers.advice import About, Finding, advice
-from controllers.contradiction import Contradiction, Limit, contradiction
+from controllers.advice import About, Finding, advise
+from controllers.contradiction import Contradiction, Limit, find_contradiction
 from controllers.exceptions import (
     ControllerError,
     EquilibriumError,
@@ -70,8 +69,8 @@ __all__ = [
     "StoredDesignError",
     "Term",
     "TerminalPriceError",
-    "advice",
-    "contradiction",
+    "advise",
+    "find_contradiction",
     "pack",
     "terminal_quantities",
     "unpack",

@@ -57,7 +57,7 @@ class Finding:
     text: str
 
 
-def advice(network: Network, locality: int) -> tuple[Finding, ...]:
+def advise(network: Network, locality: int) -> tuple[Finding, ...]:
     """Look a plant over for a locality; findings in the order of the head of this file, sections in order."""
     return (*_pieces(network), *_without_actuator(network, locality), *_unstable(network), *_uncontrollable(network))
 

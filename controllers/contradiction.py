@@ -76,7 +76,7 @@ class Contradiction:
         return f"hard limits contradict each other: {broken} must give way" + (f" to {against}" if against else "")
 
 
-def contradiction(table: RowTable, measured: Measured, data: RowData) -> Contradiction | None:
+def find_contradiction(table: RowTable, measured: Measured, data: RowData) -> Contradiction | None:
     """Find which hard limits contradict each other, None when all can be met together.
 
     Args:

@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from controllers.advice import About, Finding, advice, nearest_actuator
+from controllers.advice import About, Finding, advise, nearest_actuator
 from controllers.exceptions import NotLocalizableError
 from controllers.network import Network
 from controllers.responses import localized_responses, require_localizable
@@ -34,12 +34,12 @@ def about(found: tuple[Finding, ...], what: About) -> list[Finding]:
 @pytest.mark.parametrize("network", [zones(row(5)), tanks(row(4))])
 def test_a_sound_plant_gives_nothing_to_say(network: Network) -> None:
     """One piece, actuators everywhere, stable, controllable: no finding."""
-    assert advice(network, 1) == ()
+    assert advise(network, 1) == ()
 
 
 def test_separate_plants_are_said() -> None:
     """Each is named by its first section, with its size."""
-    found = about(advice(zones((5, [(0, 2), (1, 3)])), 1), About.PIECES)
+    found = about(advise(zones((5, [(0, 2), (1, 3)])), 1), About.PIECES)
     assert [(finding.section, finding.text.split(" section(s)")[0][-1]) for finding in found] == [
         ("zone-1", "2"), ("zone-2", "2"), ("zone-5", "1")
     ]  # fmt: skip
@@ -51,21 +51,21 @@ def test_separate_plants_are_said() -> None:
 def test_sections_without_an_actuator_in_reach_are_named() -> None:
     """With one input at the end of a row, everything beyond the locality is named with how far the nearest is."""
     network = chain([0.8] * 5, 0.05, [0])
-    found = about(advice(network, 2), About.NO_ACTUATOR)
+    found = about(advise(network, 2), About.NO_ACTUATOR)
     assert [finding.section for finding in found] == ["s3", "s4"]
     assert found[1].text == (
         "section 's4' has no actuator within 2 couplings: the nearest is 4 couplings away; "
         "raise the locality or add one"
     )
     assert nearest_actuator(network).tolist() == [0, 1, 2, 3, 4]
-    assert about(advice(network, 4), About.NO_ACTUATOR) == []
+    assert about(advise(network, 4), About.NO_ACTUATOR) == []
 
 
 def test_an_input_that_moves_nothing_is_no_actuator() -> None:
     """A column of zeros in B does not count; a plant with nothing else has no actuator at all."""
     network = Network.from_matrices([[0.5]], [[0.0]], states={"one": 1})
     assert nearest_actuator(network).tolist() == [inf]
-    (finding,) = about(advice(network, 3), About.NO_ACTUATOR)
+    (finding,) = about(advise(network, 3), About.NO_ACTUATOR)
     assert "its plant has none at all" in finding.text
 
 
@@ -81,7 +81,7 @@ def test_an_unstable_section_is_said_with_its_mode(block: list[list[float]], mod
     """Once for a conjugate pair; growing and drifting are told apart."""
     size = len(block)
     network = Network.from_matrices(block, np.eye(size), states={"one": size}, inputs={"one": size})
-    (finding,) = advice(network, 1)
+    (finding,) = advise(network, 1)
     assert finding.about is About.UNSTABLE
     assert finding.mode == pytest.approx(mode)
     assert words in finding.text
@@ -91,7 +91,7 @@ def test_a_mode_that_nothing_moves_is_said_and_whether_it_settles() -> None:
     """A state that neither the input nor a neighbour reaches: stable, it is said; unstable, nothing can hold it."""
     for pole, words in ((0.7, "it settles by itself"), (1.1, "nothing can hold it: add an actuator")):
         network = Network.from_matrices([[0.5, 0.2], [0.0, pole]], [[1.0], [0.0]], states={"one": 2})
-        (finding,) = about(advice(network, 1), About.UNCONTROLLABLE)
+        (finding,) = about(advise(network, 1), About.UNCONTROLLABLE)
         assert finding.mode == pytest.approx(pole)
         assert words in finding.text
 
@@ -99,7 +99,7 @@ def test_a_mode_that_nothing_moves_is_said_and_whether_it_settles() -> None:
 def test_a_neighbour_that_moves_a_mode_counts() -> None:
     """An unstable section without input is controllable through the driven one beside it; it is said to be unstable."""
     network = chain([1.2, 0.5], 0.3, [1])
-    assert {finding.about for finding in advice(network, 1)} == {About.UNSTABLE}
+    assert {finding.about for finding in advise(network, 1)} == {About.UNSTABLE}
 
 
 def test_a_mode_of_sections_together_is_found() -> None:
@@ -110,7 +110,7 @@ def test_a_mode_of_sections_together_is_found() -> None:
         states={"left": 1, "right": 1, "middle": 1},
         inputs={"middle": 1},
     )
-    (finding,) = about(advice(network, 1), About.UNCONTROLLABLE)
+    (finding,) = about(advise(network, 1), About.UNCONTROLLABLE)
     assert finding.section in {"left", "right"}
     assert finding.mode == pytest.approx(1.1)
 
@@ -137,7 +137,7 @@ def test_a_plant_that_is_said_to_be_out_of_hand_is(shape: str, seed: int, gain: 
     modes = np.linalg.eigvals(unreached.T @ a @ unreached) if unreached.size else np.zeros(0)
     lost = bool((np.abs(modes) >= 1).any())
     said = [
-        finding for finding in about(advice(network, 1), About.UNCONTROLLABLE) if "nothing can hold" in finding.text
+        finding for finding in about(advise(network, 1), About.UNCONTROLLABLE) if "nothing can hold" in finding.text
     ]
     assert bool(said) is lost
 

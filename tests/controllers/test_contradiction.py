@@ -9,7 +9,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.optimize import linprog
 
-from controllers.contradiction import Contradiction, contradiction
+from controllers.contradiction import Contradiction, find_contradiction
 from controllers.exceptions import NotFiniteError
 from controllers.network import Network
 from controllers.plans import Measured, Outcome, Settings
@@ -37,7 +37,7 @@ def flooded() -> tuple[Design, Measured]:
 def test_the_limit_that_must_give_way_is_named_and_what_it_gives_way_to() -> None:
     """The ceiling is out of reach: by how much in its own unit, against the pumps and moves that do all they can."""
     design, measured = flooded()
-    found = contradiction(design.table, measured, design.data())
+    found = find_contradiction(design.table, measured, design.data())
     assert found is not None
     (only,) = found.broken
     assert (only.quantity, only.side, only.step) == ("tank-2.ceiling", Region.UPPER, 0)
@@ -80,7 +80,7 @@ def test_a_solve_stalls_where_limits_contradict_each_other_and_nowhere_else(tigh
     options = Settings(tolerance_spans=1e-9)
     design = Design.build(network, quantities, horizon=6, locality=1, settings=options)
     measured = anywhere(network, rng, 3.0)
-    assert (contradiction(design.table, measured, design.data()) is not None) is tight
+    assert (find_contradiction(design.table, measured, design.data()) is not None) is tight
     for passes in (50, 80, 150):
         plan, _ = design.solve(measured, max_iterations=passes)
         assert plan.outcome is Outcome.OUT_OF_ITERATIONS
@@ -103,7 +103,7 @@ def test_outputs_give_way_before_inputs() -> None:
         Quantity("ceiling", "zone-3", Of.OUTPUT, span=8, hard=(-inf, -1.0)),
     ]
     table = RowTable.build(network, quantities, 6)
-    found = contradiction(table, at_rest(network), table.data())
+    found = find_contradiction(table, at_rest(network), table.data())
     assert found is not None
     assert [(limit.quantity, limit.side) for limit in found.broken] == [
         ("floor", Region.LOWER), ("ceiling", Region.UPPER)
@@ -118,7 +118,7 @@ def test_a_held_input_against_its_move_limit() -> None:
     network = tanks(row(3))
     table = RowTable.build(network, tank_quantities(network), 4)
     held = table.confine(table.data(), {"tank-2.pump": (30.0, 30.0)})
-    found = contradiction(table, at_rest(network), held)
+    found = find_contradiction(table, at_rest(network), held)
     assert found is not None
     involved = {limit.quantity for limit in (*found.broken, *found.against)}
     assert involved == {"tank-2.pump", "tank-2.move"}
@@ -147,7 +147,7 @@ def test_the_least_stretch_is_the_least(shape: str, seed: int) -> None:
     truth = linprog(
         np.concatenate([np.zeros(free), grip]), A_ub=rows[there], b_ub=room[there], bounds=bounds, method="highs-ds"
     )
-    found = contradiction(table, measured, data)
+    found = find_contradiction(table, measured, data)
     if truth.fun < 1e-9:
         assert found is None
     else:
@@ -161,14 +161,14 @@ def test_every_named_limit_matters() -> None:
     """Lifting the limit that must give way, and any one that it gives way to, lessens the stretch."""
     design, measured = flooded()
     data = design.data()
-    found = contradiction(design.table, measured, data)
+    found = find_contradiction(design.table, measured, data)
     assert found is not None
     for limit in (*found.broken, *found.against):
         rows = design.table.rows_of(limit.quantity)
         name = "upper" if limit.side is Region.UPPER else "lower"
         lifted = getattr(data, name).copy()
         lifted[rows] = inf if limit.side is Region.UPPER else -inf
-        less = contradiction(design.table, measured, replace(data, **{name: lifted}))
+        less = find_contradiction(design.table, measured, replace(data, **{name: lifted}))
         assert total(less) < total(found) - 1e-6
 
 
@@ -181,7 +181,7 @@ def test_no_hard_limit_no_contradiction() -> None:
     """Where nothing is hard, nothing contradicts."""
     network = zones(row(2))
     table = RowTable.build(network, [Quantity("t", "zone-1", Of.OUTPUT, price=1.0)], 3)
-    assert contradiction(table, at_rest(network), table.data()) is None
+    assert find_contradiction(table, at_rest(network), table.data()) is None
 
 
 def test_a_limit_that_is_not_a_number_is_refused() -> None:
@@ -190,7 +190,7 @@ def test_a_limit_that_is_not_a_number_is_refused() -> None:
     data = design.data()
     spoiled = replace(data, upper=np.where(np.arange(len(data.upper)) == 3, nan, data.upper))
     with pytest.raises(NotFiniteError, match="upper hard limit of quantity"):
-        contradiction(design.table, measured, spoiled)
+        find_contradiction(design.table, measured, spoiled)
     kept = RowData(**{field.name: getattr(data, field.name).copy() for field in fields(data)})
-    contradiction(design.table, measured, data)
+    find_contradiction(design.table, measured, data)
     assert all((getattr(kept, field.name) == getattr(data, field.name)).all() for field in fields(data))
