@@ -45,6 +45,9 @@ LEAD_NS = 200_000_000
 
 SUMMARY_S = 60.0
 
+TAKE_OVER_PERIODS = 20
+"""How many periods to wait for inputs that cannot be read, before the authority a run was started with is denied."""
+
 
 @dataclass
 class Tally:
@@ -133,6 +136,7 @@ class Service:
         )
         self._told = Told({}, None)
         self._wanted: tuple[Authority, bool] | None = None
+        self._patience = TAKE_OVER_PERIODS
         self._statistics = DeadlineStatistics(
             [section.name for section in design.plant.sections], design.plant.period_s
         )
@@ -209,14 +213,16 @@ class Service:
             self._answer(answer, k)
         if orders.changed is not None:
             changed, who = orders.changed
-            self.tell(sentences.authority(changed.before, changed.state.level, who), k)
+            self.tell(sentences.authority(changed.before, changed.state.level, who, overridden=changed.overridden), k)
         self._record(after, happened, wall_ns)
         self._garbage.between_periods()
         return after
 
     def _orders(self, standing: Standing) -> Orders:
-        if self._wanted is not None and np.isfinite(standing.last).all():
-            return self._take_over(standing, *self._wanted)
+        if self._wanted is not None:
+            if np.isfinite(standing.last).all() or not self._patience:
+                return self._take_over(standing, *self._wanted)
+            self._patience -= 1
         if self._desk is None:
             return Orders(standing)
         taken = self._desk.take(self._clock.wall_ns())
@@ -228,7 +234,7 @@ class Service:
         return apply_requests(self._design, self._site, standing, taken.asked)
 
     def _take_over(self, standing: Standing, to: Authority, override: bool) -> Orders:
-        """Take the authority this run was started with, now that the inputs are known; said when it is denied."""
+        """Take the authority this run was started with, now that the inputs are read; told when it is denied."""
         self._wanted = None
         decided = change_authority(self._design, self._site, standing, to, override=override)
         if isinstance(decided, Denied):

@@ -42,6 +42,7 @@ ALL = (
     ),
     sentences.quality("tank-4", "level", "good", "frozen", 20.25),
     sentences.authority("limited", "full", "mira@bench-host"),
+    sentences.authority("observe", "full", "mira@bench-host", overridden=True),
     sentences.authority_denied("full", "no passed soak record for this plant file"),
     sentences.request(3, "mira@bench-host", "hold tank-2", "applied", ""),
     sentences.request(4, "mira@bench-host", "rearm tank-2", "refused", "too few clean periods"),

@@ -1,0 +1,394 @@
+"""Tests of `gateway.service` in virtual time: a run from its first period to its last, its journal and its answers."""
+
+from __future__ import annotations
+
+import asyncio
+import gc
+from collections import Counter
+from dataclasses import replace
+from pathlib import Path
+
+import msgspec
+import pytest
+
+from gateway.authority import Authority
+from gateway.clock import NS
+from gateway.design import PlantDesign
+from gateway.hold import State
+from gateway.journal import JournalReader, Previous, RunEnd
+from gateway.plantfile.plant import SiteKind
+from gateway.requests import RequestState
+from gateway.sentences import Level
+from gateway.service import TAKE_OVER_PERIODS
+from gateway.signals import Reading
+from gateway.verdict import Verdict
+from tests.gateway.running import WHO, Run, running
+
+LIVE = SiteKind.LIVE
+
+
+def states(run: Run) -> set[State]:
+    """States of the last recorded period."""
+    return {row.state for row in run.recorded()[-1].sections}
+
+
+# Periods and their records --------------------------------------------------------------------------------------------
+
+
+async def test_every_period_is_recorded_once_and_in_order(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """k without a gap, dated by the wall clock, every section driving from the first on."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(12)
+        records = run.recorded()
+        first = records[0].k
+        assert [record.k for record in records] == list(range(first, first + 12))
+        assert [record.due_ns for record in records] == [k * 500_000_000 for k in range(first, first + 12)]
+        assert all({row.state for row in record.sections} == {State.DRIVING} for record in records)
+        assert run.service.tally.periods == 12
+
+
+async def test_every_transition_is_one_event_and_shares_its_line(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Eight sections begin to drive: eight events, one line. Tank 4 freezes: one event more, one line more."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(3)
+        assert len(run.events("transition")) == 8
+        assert len(run.said("transition")) == 1
+        run.plant.provoke("dropout tank-4.level for 1 s")
+        await run.periods(1)
+        event = run.events("transition")[-1]
+        assert (event.section, event.k, event.detail["after"]) == ("tank-4", run.recorded()[-1].k, "frozen")
+        await run.periods(4)
+        assert len(run.events("transition")) == 10
+        assert len(run.said("transition")) == 3
+
+
+async def test_what_is_logged_is_journaled_in_the_same_words(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """All but transitions, which the log gathers by cause."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(3)
+        run.ask("hold tank-4")
+        run.plant.provoke("permit off for 1 s")
+        run.clock.step_wall(2 * NS)
+        await run.periods(4)
+        logged = Counter(notice.sentence for notice, _ in run.lines if notice.kind != "transition")
+        with JournalReader(run.path) as reader:
+            journaled = Counter(event.sentence for event in reader.events(run.id) if event.kind != "transition")
+        assert logged == journaled
+        assert {"request", "permit", "clock"} <= {str(notice.kind) for notice, _ in run.lines}
+
+
+async def test_the_same_seed_gives_the_same_journal_twice(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Records and events, bit for bit, faults and requests included."""
+    journals = []
+    for attempt in ("one", "two"):
+        folder = tmp_path / attempt
+        folder.mkdir()
+        async with running(tarn_row, folder) as run:
+            run.plant.provoke("release tank-3.consumer")
+            await run.periods(10)
+            run.ask("target tank-2.level 24")
+            run.plant.provoke("freeze tank-4.level for 6 s")
+            await run.periods(14)
+            run.ask("rehearse slow 2")
+            await run.periods(14)
+            with JournalReader(run.path) as reader:
+                events = [msgspec.json.encode(event) for event in reader.events(run.id)]
+            journals.append(([msgspec.msgpack.encode(record) for record in run.recorded()], events))
+    assert journals[0] == journals[1]
+
+
+async def test_a_run_ends_after_its_time(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Three seconds are six periods."""
+    async with running(tarn_row, tmp_path, for_s=3.0) as run:
+        await run.periods(50)
+        assert run.task.done()
+        assert len(run.recorded()) == 6
+
+
+async def test_a_run_ends_when_it_is_told_to(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """At once when it waits for the next period; that period does not run any more."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(3)
+        await run.ended()
+        await asyncio.sleep(0)
+        assert len(run.recorded()) == 3
+        assert run.clock.next_ns() is None
+
+
+async def test_an_orderly_end_hands_every_section_back(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Its last write; no watchdog has to run out."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(3)
+        assert len(run.in_charge()) == 8
+        await run.ended()
+        assert run.in_charge() == []
+        assert run.link.sent[-1].bits == {f"tank-{n}": False for n in range(1, 9)}
+
+
+async def test_a_run_that_never_took_anything_hands_nothing_back(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """An observer's last word is its last heartbeat."""
+    async with running(tarn_row, tmp_path, authority=Authority.OBSERVE) as run:
+        await run.periods(3)
+        await run.ended()
+        assert {tuple(sent.names) for sent in run.link.sent} == {("panel.heartbeat",)}
+
+
+async def test_a_period_that_raises_ends_the_run(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Our fault: nothing is handed back by code that is known to be wrong, the panel's watchdog does it."""
+
+    async def broken(due_ns: int) -> object:
+        raise ZeroDivisionError("ours")
+
+    async with running(tarn_row, tmp_path, how=RunEnd.FAILED) as run:
+        await run.periods(3)
+        run.link.gather = broken  # type: ignore[method-assign, assignment]
+        with pytest.raises(ZeroDivisionError, match="ours"):
+            await run.periods(1)
+        assert len(run.in_charge()) == 8
+        run.clock.spend(3 * NS)
+        assert run.in_charge() == []
+        assert gc.isenabled()
+
+
+# Time -----------------------------------------------------------------------------------------------------------------
+
+
+async def test_periods_that_passed_are_skipped_and_told(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """The processor was gone for three and a half periods: three are lost, counted as misses, and said."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(4)
+        last = run.recorded()[-1].k
+        run.clock.spend(round(3.4 * 500_000_000) + 500_000_000)
+        await run.periods(1)
+        records = run.recorded()
+        assert records[-1].k == last + 4
+        assert run.service.tally.skipped == 3
+        (notice,) = run.said("skipped")
+        assert notice.detail == {"first_k": last + 1, "count": 3}
+        assert records[-1].timing.start_us == pytest.approx(200_000, abs=1)
+        assert states(run) == {State.HOLDING}
+
+
+async def test_a_step_of_the_wall_clock_is_told_and_moves_no_period(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """k goes on by one, instants stay; only the labels follow the new wall clock."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(4)
+        run.clock.step_wall(3600 * NS)
+        await run.periods(4)
+        (event,) = run.events("clock")
+        assert event.detail["step_ms"] == 3_600_000.0
+        records = run.recorded()
+        assert [record.k - records[0].k for record in records] == list(range(8))
+        assert records[4].due_ns - records[3].due_ns == 3600 * NS + 500_000_000
+        assert states(run) == {State.DRIVING}
+        assert run.service.tally.missed == 0
+
+
+async def test_slack_is_what_is_left_when_the_write_is_acknowledged(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """450 ms to the write's cut-off, less what gathering took."""
+    async with running(tarn_row, tmp_path) as run:
+        run.link.takes_ns = 30_000_000
+        await run.periods(2)
+        assert run.recorded()[-1].slack_us == 420_000
+        assert run.service.deadlines().quantiles["slack_us"].worst == 420_000
+
+
+async def test_a_summary_is_told_every_minute(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """120 periods of 500 ms."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(119)
+        assert run.said("summary") == []
+        await run.periods(1)
+        assert len(run.said("summary")) == 1
+
+
+async def test_garbage_is_collected_between_periods_and_handed_back_at_the_end(
+    tarn_row: PlantDesign, tmp_path: Path
+) -> None:
+    """Never by the interpreter in the middle of one."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(1)
+        assert not gc.isenabled()
+        await run.ended()
+        assert gc.isenabled()
+
+
+# Requests -------------------------------------------------------------------------------------------------------------
+
+
+async def test_requests_are_answered_journaled_and_told(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Applied or refused, with the reason, by whom, and in which period."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(3)
+        good, bad = run.ask("hold tank-4"), run.ask("rearm tank-5")
+        await run.periods(1)
+        k = run.recorded()[-1].k
+        assert (run.answer(good).state, run.answer(good).k) == (RequestState.APPLIED, k)
+        assert run.answer(bad).state is RequestState.REFUSED
+        assert "not on hold" in run.answer(bad).reason
+        assert [(one.request, one.who, one.state, one.k) for one in run.outcomes()] == [
+            (good, WHO, "applied", k),
+            (bad, WHO, "refused", k),
+        ]
+        assert [notice.level for notice in run.said("request")] == [Level.INFO, Level.WARNING]
+
+
+async def test_a_request_nobody_can_read_is_refused_before_it_reaches_a_period(
+    tarn_row: PlantDesign, tmp_path: Path
+) -> None:
+    """And told and journaled like any other."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(2)
+        number, old = run.ask("hold tank-44"), run.ask("hold tank-4", age_s=60)
+        await run.periods(2)
+        assert "tank-4" in run.answer(number).reason
+        assert "void" in run.answer(old).reason
+        assert [one.state for one in run.outcomes()] == ["refused", "refused"]
+        assert len(run.said("request")) == len(run.events("request")) == 2
+        assert states(run) == {State.DRIVING}
+
+
+async def test_a_target_is_driven_to(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """By request, on the running plant."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(2)
+        run.ask("target tank-2.level 22")
+        await run.periods(90)
+        assert run.plant.truth()["tank-2.level"] == pytest.approx(22.0, abs=0.2)
+
+
+async def test_hold_and_rearm_from_asking_to_driving(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """A person's whole detour, as the journal tells it."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(3)
+        run.ask("hold tank-4")
+        await run.periods(8)
+        run.ask("rearm tank-4")
+        await run.periods(2)
+        story = [
+            (event.detail["before"], event.detail["after"])
+            for event in run.events("transition")
+            if event.section == "tank-4"
+        ]
+        assert story == [
+            ("frozen", "driving"),
+            ("driving", "holding"),
+            ("holding", "frozen"),
+            ("frozen", "driving"),
+        ]
+
+
+async def test_a_rehearsal_makes_the_next_syntheses_late(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """As many as were asked for."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(2)
+        run.ask("rehearse slow 2")
+        await run.periods(3)
+        verdicts = [record.sections[0].verdict for record in run.recorded()[2:]]
+        assert verdicts == [Verdict.LATE, Verdict.LATE, Verdict.ON_TIME]
+
+
+# Authority and restarts -----------------------------------------------------------------------------------------------
+
+
+async def test_a_live_site_is_only_watched_before_its_inputs_were_read(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Then the authority asked for is taken, and said; the sections drive one period later."""
+    async with running(tarn_row, tmp_path, site=LIVE, authority=Authority.LIMITED) as run:
+        await run.periods(3)
+        by_period = [record.sections[0].state for record in run.recorded()]
+        assert by_period == [State.WATCHING, State.FROZEN, State.DRIVING]
+        (notice,) = run.said("authority")
+        assert (notice.detail["after"], notice.detail["who"]) == ("limited", "the command that started it")
+
+
+async def test_full_authority_over_a_live_site_is_denied_without_a_record(
+    tarn_row: PlantDesign, tmp_path: Path
+) -> None:
+    """And said as something a person must know."""
+    async with running(tarn_row, tmp_path, site=LIVE) as run:
+        await run.periods(5)
+        (notice,) = run.said("authority")
+        assert notice.level is Level.ERROR
+        assert "soak record" in notice.sentence
+        assert states(run) == {State.WATCHING}
+
+
+async def test_a_person_who_insists_is_heard_loudly(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """The override is an error in the log and an event in the journal."""
+    async with running(tarn_row, tmp_path, site=LIVE, override=True) as run:
+        await run.periods(3)
+        (event,) = run.events("authority")
+        assert event.detail["overridden"] is True
+        assert "no passed soak record" in event.sentence
+        assert run.said("authority")[0].level is Level.ERROR
+        assert states(run) == {State.DRIVING}
+
+
+async def test_inputs_that_cannot_be_read_deny_the_authority_in_the_end(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Nobody waits in silence for a pump that does not answer: it is named."""
+    async with running(tarn_row, tmp_path, site=LIVE, authority=Authority.LIMITED) as run:
+        run.link.shows["tank-4.pump"] = Reading(None, 0x80310000)
+        await run.periods(TAKE_OVER_PERIODS)
+        assert run.said("authority") == []
+        await run.periods(1)
+        (notice,) = run.said("authority")
+        assert "tank-4.pump" in notice.sentence
+        assert states(run) == {State.WATCHING}
+
+
+async def test_a_persons_word_about_authority_is_newer_than_the_commands(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Asked to observe before the command's authority could be taken: it is not taken any more."""
+    async with running(tarn_row, tmp_path, site=LIVE, authority=Authority.LIMITED) as run:
+        run.link.shows["tank-4.pump"] = Reading(None, 0x80310000)
+        await run.periods(2)
+        run.ask("authority observe")
+        await run.periods(1)
+        run.link.shows.clear()
+        await run.periods(4)
+        assert states(run) == {State.WATCHING}
+
+
+async def test_after_a_clean_end_the_next_run_drives_at_once(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """The same plant, the same journal."""
+    async with running(tarn_row, tmp_path) as first:
+        await first.periods(3)
+    async with running(tarn_row, tmp_path, after=first) as second:
+        await second.periods(1)
+        assert second.journal.previous.previous is Previous.CLEAN
+        assert states(second) == {State.DRIVING}
+
+
+@pytest.mark.parametrize("how", [RunEnd.FAILED, RunEnd.HELD])
+async def test_after_any_other_end_the_next_run_starts_on_hold(
+    tarn_row: PlantDesign, tmp_path: Path, how: RunEnd
+) -> None:
+    """And drives only after a rearm."""
+    async with running(tarn_row, tmp_path, how=how) as first:
+        await first.periods(3)
+    async with running(tarn_row, tmp_path, after=first) as second:
+        await second.periods(8)
+        assert states(second) == {State.HOLDING}
+        second.ask("rearm all")
+        await second.periods(2)
+        assert states(second) == {State.DRIVING}
+
+
+async def test_the_tally_names_who_is_held(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """And keeps a latch in mind that watching hides: such a run must not count as a clean one."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(2)
+        run.ask("hold tank-4")
+        await run.periods(1)
+        assert (run.service.tally.held, run.service.tally.latched) == (("tank-4",), True)
+        run.ask("authority observe")
+        await run.periods(1)
+        assert (run.service.tally.held, run.service.tally.latched) == ((), True)
+
+
+async def test_a_plant_without_a_panel_is_driven_all_the_same(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Inputs go out alone; nothing is handed back, since nobody is there."""
+    alone = replace(tarn_row, plant=replace(tarn_row.plant, panel=None))
+    async with running(alone, tmp_path) as run:
+        await run.periods(5)
+        assert states(run) == {State.DRIVING}
+        assert all(list(sent.inputs) == sent.names for sent in run.link.sent)
