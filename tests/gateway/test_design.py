@@ -27,6 +27,12 @@ def with_level(plant: Plant, **changed: object) -> Plant:
     return replace(plant, sections=sections)
 
 
+def small(plant: Plant) -> Plant:
+    """Three tanks of it, planned five periods ahead: designed in no time."""
+    controller = replace(plant.controller, horizon=5)
+    return replace(plant, sections=plant.sections[:3], couplings=plant.couplings[:2], controller=controller)
+
+
 def test_the_plant_rests_at_its_operating_point(tarn_row: PlantDesign) -> None:
     """Nothing moves there, and every output is at its target."""
     x, u, w = tarn_row.point.x, tarn_row.point.u, tarn_row.point.w
@@ -138,7 +144,8 @@ def test_the_assembled_observer_is_stable(tarn_row: PlantDesign) -> None:
 
 def test_the_same_plant_file_has_the_same_fingerprint(tarn_row: PlantDesign) -> None:
     """Built twice."""
-    assert build_design(tarn_row.plant).fingerprint == tarn_row.fingerprint
+    plant = small(tarn_row.plant)
+    assert build_design(plant).fingerprint == build_design(plant).fingerprint
 
 
 @pytest.mark.parametrize(
@@ -152,12 +159,14 @@ def test_the_same_plant_file_has_the_same_fingerprint(tarn_row: PlantDesign) -> 
 def test_whatever_changes_the_plant_file_changes_the_fingerprint(tarn_row: PlantDesign, changed: object) -> None:
     """A passed record is for exactly this plant file."""
     assert callable(changed)
-    assert build_design(changed(tarn_row.plant)).fingerprint != tarn_row.fingerprint
+    plant = small(tarn_row.plant)
+    assert build_design(changed(plant)).fingerprint != build_design(plant).fingerprint
 
 
 def test_a_plant_that_cannot_be_localized_is_refused(tarn_row: PlantDesign) -> None:
     """No tank is alone with what it does; the message says how far to look instead."""
-    narrow = replace(tarn_row.plant, controller=replace(tarn_row.plant.controller, locality=0))
+    plant = small(tarn_row.plant)
+    narrow = replace(plant, controller=replace(plant.controller, locality=0))
     with pytest.raises(NotLocalizableError, match="set the locality to 1"):
         build_design(narrow)
 
