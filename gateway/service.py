@@ -26,7 +26,7 @@ from gateway.deadline import DeadlineStatistics, DeadlineSummary
 from gateway.design import PlantDesign
 from gateway.hold import State, start
 from gateway.journal import Event, Journal, PeriodRecord
-from gateway.links.protocol import Link
+from gateway.links.protocol import Link, WriteOutcome
 from gateway.orders import Answer, Orders, apply_requests, change_authority, settle
 from gateway.period import Happened, Period
 from gateway.plantfile.plant import SiteKind
@@ -282,9 +282,10 @@ class Service:
         """Leave the plant to its panel: an orderly end does not wait for a watchdog."""
         if self._design.plant.panel is None or not standing.charge_expected.any():
             return
-        bits = [
-            (self._tags[in_charge_tag(section.name)], False)
-            for section, ours in zip(self._design.plant.sections, standing.charge_expected, strict=True)
-            if ours
-        ]
-        await self._link.write(bits, self._clock.monotonic_ns() + self._period_ns)
+        sections = self._design.plant.sections
+        ours = [one.name for one, expected in zip(sections, standing.charge_expected, strict=True) if expected]
+        bits = [(self._tags[in_charge_tag(name)], False) for name in ours]
+        outcomes = await self._link.write(bits, self._clock.monotonic_ns() + self._period_ns)
+        open_ = [name for name in ours if outcomes.get(in_charge_tag(name)) is not WriteOutcome.WRITTEN]
+        if open_:
+            self.tell(sentences.hand_back_unanswered(open_))

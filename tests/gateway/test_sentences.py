@@ -52,6 +52,7 @@ ALL = (
     sentences.link_lost("opc.tcp://panel.example:4840", "connection reset", ["tank-1", "tank-2"]),
     sentences.link_retry("opc.tcp://panel.example:4840", 3, 1.5, "connection refused"),
     sentences.write_unknown(["tank-1.pump"], 41, "no answer in 200 ms"),
+    sentences.hand_back_unanswered(["tank-1", "tank-2"]),
     sentences.set_refused(41, "set 41 is older than set 42"),
     *(sentences.panel(tripped=tripped) for tripped in (True, False)),
     *(sentences.permit(on=on) for on in (True, False)),

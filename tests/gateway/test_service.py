@@ -125,6 +125,19 @@ async def test_an_orderly_end_hands_every_section_back(tarn_row: PlantDesign, tm
         assert run.link.sent[-1].bits == {f"tank-{n}": False for n in range(1, 9)}
 
 
+async def test_a_hand_back_that_is_not_acknowledged_is_told(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """The sections are named; the panel's watchdog takes them."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(3)
+        run.link.refuses = {"tank-4.in_charge"}
+        await run.ended()
+        (notice,) = run.said("write_unknown")
+        assert notice.detail["sections"] == ["tank-4"]
+        assert run.in_charge() == ["tank-4"]
+        run.clock.spend(3 * NS)
+        assert run.in_charge() == []
+
+
 async def test_a_run_that_never_took_anything_hands_nothing_back(tarn_row: PlantDesign, tmp_path: Path) -> None:
     """An observer's last word is its last heartbeat."""
     async with running(tarn_row, tmp_path, authority=Authority.OBSERVE) as run:
