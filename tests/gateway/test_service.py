@@ -163,6 +163,18 @@ async def test_a_period_that_raises_ends_the_run(tarn_row: PlantDesign, tmp_path
         assert gc.isenabled()
 
 
+async def test_a_cancelled_run_leaves_nothing_behind(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """Neither a sleeper nor a collector that is switched off; the panel's watchdog does the rest."""
+    async with running(tarn_row, tmp_path, how=RunEnd.FAILED) as run:
+        await run.periods(3)
+        run.task.cancel()
+        with pytest.raises(asyncio.CancelledError):
+            await run.task
+        await asyncio.sleep(0)
+        assert run.clock.next_ns() is None
+        assert gc.isenabled()
+
+
 # Time -----------------------------------------------------------------------------------------------------------------
 
 
@@ -195,6 +207,23 @@ async def test_a_step_of_the_wall_clock_is_told_and_moves_no_period(tarn_row: Pl
         assert records[4].due_ns - records[3].due_ns == 3600 * NS + 500_000_000
         assert states(run) == {State.DRIVING}
         assert run.service.tally.missed == 0
+
+
+async def test_a_peers_clock_that_is_set_back_costs_one_period(tarn_row: PlantDesign, tmp_path: Path) -> None:
+    """The plant stamps by the same wall clock here: readings from the past are stale once, and k goes on by one."""
+    async with running(tarn_row, tmp_path) as run:
+        await run.periods(4)
+        run.clock.step_wall(-3600 * NS)
+        await run.periods(3)
+        records = run.recorded()
+        assert [record.k - records[0].k for record in records] == list(range(7))
+        assert [record.sections[0].verdict for record in records[3:]] == [
+            Verdict.ON_TIME,
+            Verdict.BLIND,
+            Verdict.ON_TIME,
+            Verdict.ON_TIME,
+        ]
+        assert len(run.events("clock")) == 1
 
 
 async def test_slack_is_what_is_left_when_the_write_is_acknowledged(tarn_row: PlantDesign, tmp_path: Path) -> None:

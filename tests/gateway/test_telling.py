@@ -210,6 +210,17 @@ async def test_a_refused_set_is_told_in_the_panels_words(speaker: Speaker) -> No
     assert "expired" in notice.sentence
 
 
+async def test_a_refused_set_keeps_its_number_over_skipped_periods(speaker: Speaker) -> None:
+    """It is the set that was sent, not the period before this one."""
+    speaker.rig.link.direct.drop_answers, speaker.rig.link.refuses = True, {"panel.period"}
+    await speaker.run()
+    sent_k = speaker.rig.k - 1
+    speaker.rig.link.direct.drop_answers, speaker.rig.link.refuses = False, set()
+    speaker.rig.skip(2)
+    (notice,) = await speaker.run()
+    assert notice.detail["set"] == sent_k
+
+
 async def test_a_broken_synthesis_is_told_with_its_reason(speaker: Speaker) -> None:
     """It is our fault, and somebody must look."""
     happened = replace(speaker.rig.history[-1], broken="a price is not finite")
