@@ -10,6 +10,7 @@ from pathlib import Path
 from gateway.authority import Authority
 from gateway.clock import VirtualClock
 from gateway.design import PlantDesign
+from gateway.hold import State
 from gateway.journal import Event, Journal, JournalReader, Outcome, PeriodRecord, RunEnd, RunStart
 from gateway.journal.database import open_to_share, open_to_write
 from gateway.plantfile import canonical
@@ -176,3 +177,8 @@ async def running(
     finally:
         run.task.cancel()
         run.close(how)
+
+
+def states(run: Run) -> set[State]:
+    """States of the last recorded period."""
+    return {row.state for row in run.recorded()[-1].sections}
