@@ -85,6 +85,14 @@ class Program:
         net = self.table.network
         return Measured(np.zeros(net.a.shape[0]), np.zeros(net.e.shape[1]), np.zeros(net.b.shape[1]))
 
+    @property
+    def section_by_section(self) -> Ints:
+        """Order of the variables that puts each section's whole trajectory together: the program is then banded."""
+        net, steps = self.table.network, self.table.horizon
+        of_state = np.repeat(np.arange(net.size), np.diff(net.x_at))
+        sections = [np.tile(of_state, steps), np.tile(net.section_of_input(), steps), self.table.section[self.banded]]
+        return np.argsort(np.concatenate(sections), kind="stable").astype(np.int64)
+
     def numbers(self, measured: Measured, data: RowData) -> Numbers:
         """Return the vectors of one period."""
         net = self.table.network
