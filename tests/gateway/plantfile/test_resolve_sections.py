@@ -151,3 +151,91 @@ def test_sections_share_no_state() -> None:
     one, two, _ = plant_of(GOOD).sections
     assert one.parameters == two.parameters
     assert one.parameters is not two.parameters
+
+
+def test_an_input_that_nobody_drives_is_a_mistake() -> None:
+    """It is named once, with the physics that has it."""
+    text = GOOD[: GOOD.index("[kinds.oven.signals.heater]")] + GOOD[GOOD.index("[[sections]]") :]
+    mistakes = mistakes_of(text)
+    assert {mistake.place for mistake in mistakes} == {"sections[2].names"}
+    assert {mistake.read for mistake in mistakes} <= {'"oven-1"', '"oven-2"', '"oven-3"'}
+
+
+def test_a_name_twice_in_one_pattern_is_refused() -> None:
+    """In one table as well."""
+    assert only_mistake(edited('names = "oven-{1..3}"', 'names = "oven-{1..3,2}"')).read == '"oven-2"'
+
+
+def test_a_section_can_t_be_called_panel() -> None:
+    """Its tags would be the panel's."""
+    text = edited("[[couplings]]", '[[sections]]\nnames = "panel"\nkind = "oven"\n[[couplings]]')
+    assert only_mistake(text).read == '"panel"'
+
+
+def test_an_unknown_kind_brings_the_nearest() -> None:
+    """Of those of the file; its names are still known to the couplings."""
+    mistake = only_mistake(edited('kind = "oven"', 'kind = "ovn"'))
+    assert (mistake.place, mistake.suggestion) == ("sections[1].kind", "oven")
+
+
+def test_an_unknown_physics_brings_the_nearest() -> None:
+    """Of those there are."""
+    mistake = only_mistake(edited('physics = "zone"', 'physics = "zones"'))
+    assert (mistake.place, mistake.suggestion) == ("kinds.oven.physics", "zone")
+
+
+def test_signals_are_checked_even_without_a_physics() -> None:
+    """A misspelled physics hides nothing else."""
+    text = edited("span = [0, 400]", "span = [400, 0]", edited('physics = "zone"', 'physics = "zones"'))
+    assert [mistake.place for mistake in mistakes_of(text)] == [
+        "kinds.oven.physics",
+        "kinds.oven.signals.temperature.span",
+    ]
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "key"),
+    [
+        ('loss = "5 W/K"', 'loss = "5 W"', "loss"),
+        ('loss = "5 W/K"', "loss = 5", "loss"),
+        ('loss = "5 W/K"', 'loss = "5"', "loss"),
+        ('loss = "5 W/K"', "loss = true", "loss"),
+        ('loss = "5 W/K"', "loss = nan", "loss"),
+        ('loss = "5 W/K"', "loss = { to = 5 }", "loss"),
+        ('lag = "3 s"', 'lag = "3 kg"', "lag"),
+        ('lag = "3 s"', 'lag = "3 s"\nemissivity = "3 cm"', "emissivity"),
+        ('lag = "3 s"', 'lag = "3 s"\nemissivity = nan', "emissivity"),
+        ('lag = "3 s"', 'lag = "3 s"\ncolour = "red"', "colour"),
+        ('heat_capacity = "2 kJ/K"', 'heat_capacity = "-2 kJ/K"', "heat_capacity"),
+    ],
+)
+def test_a_wrong_parameter_is_named(old: str, new: str, key: str) -> None:
+    """Wrong dimension, bare number for one with a unit, wrong type, unknown; and what the physics itself refuses."""
+    assert only_mistake(edited(old, new)).place == f"kinds.oven.{key}"
+
+
+@pytest.mark.parametrize(("written", "value"), [("0.5", 0.5), ('"50 %"', 0.5), ("1", 1.0)])
+def test_a_plain_number_may_be_bare_or_a_percentage(written: str, value: float) -> None:
+    """Only where the physics wants a number without a unit."""
+    plant = plant_of(edited('lag = "3 s"', f'lag = "3 s"\nemissivity = {written}'))
+    assert plant.sections[0].parameters["emissivity"] == value
+
+
+def test_sections_share_no_state() -> None:
+    """Each has its own parameters, so that nobody changes one through another."""
+    one, two, _ = plant_of(GOOD).sections
+    assert one.parameters == two.parameters
+    assert one.parameters is not two.parameters
+
+
+def test_an_input_that_nobody_drives_is_a_mistake() -> None:
+    """It is named once, with the physics that has it."""
+    text = GOOD.replace(
+        GOOD[
+            GOOD.index("[kinds.oven.signals.heater]") : GOOD.index("[", GOOD.index("[kinds.oven.signals.heater]") + 1)
+        ],
+        "",
+    )
+    mistakes = mistakes_of(text)
+    assert [mistake.place for mistake in mistakes] == ["kinds.oven.signals.heater"]
+    assert "oven" in mistakes[0].allowed
