@@ -18,7 +18,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy import sparse
 
-from controllers.arrays import Floats, Ints
+from controllers.arrays import Floats, Ints, block_diagonal
 from controllers.rows import RowData, RowTable
 from controllers.synthesis import Measured
 
@@ -69,7 +69,7 @@ class Program:
         bands = sparse.hstack([z_map[banded], -sparse.eye_array(len(banded))])
         return cls(
             table=table,
-            p=sparse.csc_matrix(sparse.block_diag([quadratic, slack_price], format="csc")),
+            p=sparse.csc_matrix(block_diagonal([quadratic, slack_price])),
             k=sparse.csc_matrix(sparse.vstack([dynamics, limited, bands], format="csc")),
             equations=steps * n,
             inputs=slice(steps * n, steps * n + m),
