@@ -17,6 +17,6 @@ Bools = npt.NDArray[np.bool_]
 def block_diagonal(blocks: Sequence[Any]) -> sparse.csr_array:
     """Put dense or sparse blocks on a diagonal.
 
-    Every block is made a sparse array first: SciPy gives a sparse matrix, and soon no longer, when all blocks are dense.
+    Every block is made a sparse array first: when all are dense, SciPy gives a sparse matrix, and soon no longer.
     """
     return sparse.csr_array(sparse.block_diag([sparse.csr_array(block) for block in blocks], format="csr"))
