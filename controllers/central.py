@@ -17,7 +17,7 @@ import clarabel
 import numpy as np
 from scipy import sparse
 
-from controllers.arrays import Floats
+from controllers.arrays import Floats, block_diagonal
 from controllers.exceptions import ReferenceSolveError
 from controllers.plans import Measured
 from controllers.rows import RowData, RowTable
@@ -56,12 +56,8 @@ def assemble(table: RowTable, measured: Measured, data: RowData) -> QuadraticPro
     offset = qp @ measured.u_before
 
     priced = sparse.diags_array(data.price, format="csr")
-    slack = sparse.block_diag(
-        [
-            sparse.csr_array((z_map.shape[1] - len(banded),) * 2),
-            sparse.diags_array(data.soft_price[banded], format="csr"),
-        ],
-        format="csr",
+    slack = block_diagonal(
+        [sparse.csr_array((z_map.shape[1] - len(banded),) * 2), sparse.diags_array(data.soft_price[banded])]
     )
     p = 2 * (z_map.T @ priced @ z_map + slack)
     g = 2 * z_map.T @ (data.price * (offset - data.target))

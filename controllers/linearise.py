@@ -25,7 +25,7 @@ from scipy import sparse
 from scipy.linalg import expm
 from scipy.sparse.linalg import expm_multiply, lsqr, splu
 
-from controllers.arrays import Floats, Ints
+from controllers.arrays import Floats, Ints, block_diagonal
 from controllers.exceptions import EquilibriumError
 
 AnyArray = npt.NDArray[Any]
@@ -170,9 +170,9 @@ def discretise(
         A, B, E of (1) for a period of `ts_s` seconds.
     """
     blocks = [_exact_step(a[lo:hi, lo:hi].toarray(), ts_s) for lo, hi in pairwise(x_at)]
-    own = sparse.block_diag([transition for transition, _ in blocks], format="csr")
-    integral = sparse.block_diag([held for _, held in blocks], format="csr")
-    diagonal = sparse.block_diag([a[lo:hi, lo:hi].toarray() for lo, hi in pairwise(x_at)], format="csr")
+    own = block_diagonal([transition for transition, _ in blocks])
+    integral = block_diagonal([held for _, held in blocks])
+    diagonal = block_diagonal([a[lo:hi, lo:hi] for lo, hi in pairwise(x_at)])
     return (
         sparse.csr_array(own + integral @ (a - diagonal)),
         sparse.csr_array(integral @ b),

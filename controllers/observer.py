@@ -22,7 +22,7 @@ import numpy as np
 from scipy import sparse
 from scipy.linalg import LinAlgError, solve_discrete_are
 
-from controllers.arrays import Bools, Floats
+from controllers.arrays import Bools, Floats, block_diagonal
 from controllers.exceptions import ObserverError
 from controllers.network import Network
 from controllers.spectrum import spectral_radius
@@ -71,8 +71,8 @@ class Observer:
             n = local.a.shape[0]
             blocks_x.append(seen[key][:n])
             blocks_w.append(seen[key][n:])
-        gain_x = sparse.csr_array(sparse.block_diag(blocks_x, format="csr"))
-        gain_w = sparse.csr_array(sparse.block_diag(blocks_w, format="csr"))
+        gain_x = block_diagonal(blocks_x)
+        gain_w = block_diagonal(blocks_w)
         radius = spectral_radius(_error_dynamics(network, gain_x, gain_w))
         if not radius < 1:
             raise ObserverError(

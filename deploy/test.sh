@@ -1,10 +1,10 @@
 #!/bin/sh
 # Lint, types and every test. Arguments go to pytest, for instance:  sh deploy/test.sh tests/controllers -k warm
-# No test needs a system package yet, so nothing is skipped.
 set -eu
 root=$(cd "$(dirname "$0")/.." && pwd)
 . "$root/deploy/environment.sh"
 prepare requirements-test.lock
+echo "No test needs a system package yet: nothing is installed beside .venv, and nothing is skipped for want of one." >&2
 cd "$root"
 bin=$root/.venv/bin
 if [ $# -gt 0 ]; then

@@ -24,7 +24,7 @@ import numpy as np
 from scipy import sparse
 
 from controllers import Design, Network, Noise, Observer, Of, Quantity, Settings
-from controllers.arrays import Floats, Ints
+from controllers.arrays import Floats, Ints, block_diagonal
 from controllers.linearise import OperatingPoint, colour_columns, discretise, equilibrium, held_coupling_error, jacobian
 from gateway.plantfile.canonical import canonical
 from gateway.plantfile.plant import Plant, Role, Signal
@@ -227,8 +227,8 @@ def _jacobians(physics: PhysicsNetwork, point: OperatingPoint) -> tuple[sparse.c
     pattern_x = _block_pattern(physics, physics.x_at)
     pattern_u = _block_pattern(physics, physics.u_at)
     pattern_w = _block_pattern(physics, physics.w_at)
-    pattern_y = sparse.csr_array(
-        sparse.block_diag([np.ones((p, n)) for p, n in zip(np.diff(physics.y_at), np.diff(physics.x_at), strict=True)])
+    pattern_y = block_diagonal(
+        [np.ones((p, n)) for p, n in zip(np.diff(physics.y_at), np.diff(physics.x_at), strict=True)]
     )
     x, u, w = point.x, point.u, point.w
     return (

@@ -55,7 +55,7 @@ class Happened:
         verdicts: per section.
         transitions: per section whose hold state changed.
         refusals: per section, asks that changed nothing.
-        refused_set: the panel's words when it refused the last set, empty otherwise.
+        refused_set: counter of the last set and the panel's words about it, None unless it refused it.
         unknown: tags whose write was not answered.
         timing: where the time went.
     """
@@ -72,7 +72,7 @@ class Happened:
     verdicts: tuple[Verdict, ...]
     transitions: Mapping[int, Transition]
     refusals: Mapping[int, tuple[Refusal, ...]]
-    refused_set: str
+    refused_set: tuple[int, str] | None
     unknown: tuple[str, ...]
     timing: Stopwatch
 
@@ -238,8 +238,8 @@ class Period:
             return None, str(error)
 
     @staticmethod
-    def _refusal(standing: Standing, view: PanelView) -> str:
-        """The panel's words about the last set if it did not take it, empty otherwise and when nobody can tell."""
+    def _refusal(standing: Standing, view: PanelView) -> tuple[int, str] | None:
+        """The last set and the panel's words about it, None when it took it and when nobody can tell."""
         if standing.sent is None or view.accepted is None or view.accepted == standing.sent.k:
-            return ""
-        return view.refusal or "it shows another counter"
+            return None
+        return standing.sent.k, view.refusal or "it shows another counter"

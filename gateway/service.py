@@ -26,7 +26,7 @@ from gateway.deadline import DeadlineStatistics, DeadlineSummary
 from gateway.design import PlantDesign
 from gateway.hold import State, start
 from gateway.journal import Event, Journal, PeriodRecord
-from gateway.links.protocol import Link
+from gateway.links.protocol import Link, WriteOutcome
 from gateway.orders import Answer, Orders, apply_requests, change_authority, settle
 from gateway.period import Happened, Period
 from gateway.plantfile.plant import SiteKind
@@ -44,6 +44,9 @@ LEAD_NS = 200_000_000
 """Time between deciding to start and the first period."""
 
 SUMMARY_S = 60.0
+
+TAKE_OVER_PERIODS = 20
+"""How many periods to wait for inputs that cannot be read, before the authority a run was started with is denied."""
 
 
 @dataclass
@@ -133,6 +136,7 @@ class Service:
         )
         self._told = Told({}, None)
         self._wanted: tuple[Authority, bool] | None = None
+        self._patience = TAKE_OVER_PERIODS
         self._statistics = DeadlineStatistics(
             [section.name for section in design.plant.sections], design.plant.period_s
         )
@@ -209,14 +213,16 @@ class Service:
             self._answer(answer, k)
         if orders.changed is not None:
             changed, who = orders.changed
-            self.tell(sentences.authority(changed.before, changed.state.level, who), k)
+            self.tell(sentences.authority(changed.before, changed.state.level, who, overridden=changed.overridden), k)
         self._record(after, happened, wall_ns)
         self._garbage.between_periods()
         return after
 
     def _orders(self, standing: Standing) -> Orders:
-        if self._wanted is not None and np.isfinite(standing.last).all():
-            return self._take_over(standing, *self._wanted)
+        if self._wanted is not None:
+            if np.isfinite(standing.last).all() or not self._patience:
+                return self._take_over(standing, *self._wanted)
+            self._patience -= 1
         if self._desk is None:
             return Orders(standing)
         taken = self._desk.take(self._clock.wall_ns())
@@ -228,7 +234,7 @@ class Service:
         return apply_requests(self._design, self._site, standing, taken.asked)
 
     def _take_over(self, standing: Standing, to: Authority, override: bool) -> Orders:
-        """Take the authority this run was started with, now that the inputs are known; said when it is denied."""
+        """Take the authority this run was started with, now that the inputs are read; told when it is denied."""
         self._wanted = None
         decided = change_authority(self._design, self._site, standing, to, override=override)
         if isinstance(decided, Denied):
@@ -276,9 +282,10 @@ class Service:
         """Leave the plant to its panel: an orderly end does not wait for a watchdog."""
         if self._design.plant.panel is None or not standing.charge_expected.any():
             return
-        bits = [
-            (self._tags[in_charge_tag(section.name)], False)
-            for section, ours in zip(self._design.plant.sections, standing.charge_expected, strict=True)
-            if ours
-        ]
-        await self._link.write(bits, self._clock.monotonic_ns() + self._period_ns)
+        sections = self._design.plant.sections
+        ours = [one.name for one, expected in zip(sections, standing.charge_expected, strict=True) if expected]
+        bits = [(self._tags[in_charge_tag(name)], False) for name in ours]
+        outcomes = await self._link.write(bits, self._clock.monotonic_ns() + self._period_ns)
+        open_ = [name for name in ours if outcomes.get(in_charge_tag(name)) is not WriteOutcome.WRITTEN]
+        if open_:
+            self.tell(sentences.hand_back_unanswered(open_))

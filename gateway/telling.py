@@ -110,8 +110,8 @@ def notices_of(design: PlantDesign, told: Told, happened: Happened) -> tuple[lis
     out = list(_panel_notices(told.view, happened.view, severed=not happened.gathered.readings))
     if happened.broken:
         out.append(sentences.synthesis_broken(happened.broken))
-    if happened.refused_set:
-        out.append(sentences.set_refused(happened.k - 1, happened.refused_set))
+    if happened.refused_set is not None:
+        out.append(sentences.set_refused(*happened.refused_set))
     if happened.unknown:
         out.append(sentences.write_unknown(happened.unknown, happened.k, "no answer before the cut-off"))
     if all(quality is Quality.MISSING for quality in qualities.values()):

@@ -9,7 +9,7 @@ from gateway.plantfile.catalogue import Catalogue, PhysicsEntry
 from gateway.plantfile.lines import Place
 from gateway.plantfile.mistakes import Ledger, nearest
 from gateway.plantfile.names import RESERVED, row_order
-from gateway.plantfile.plant import SectionSpec, Signal
+from gateway.plantfile.plant import Role, SectionSpec, Signal
 from gateway.plantfile.resolve_parameters import find_misspelled, read_parameters
 from gateway.plantfile.resolve_signal import read_signal
 from gateway.plantfile.tables import Document, KindTable, SectionsTable, SignalTable
@@ -32,8 +32,8 @@ class _Kind:
         parameters = self.parameters.under(WrittenParameters.of(table, place))
         return replace(self, parameters=parameters, signals=signals)
 
-    def resolve(self, ledger: Ledger) -> SectionSpec:
-        """Resolve to a section without a name."""
+    def resolve(self, ledger: Ledger, *, used: bool = True) -> SectionSpec:
+        """Resolve to a section without a name; what nobody uses need not be complete."""
         signals: dict[str, Signal] = {}
         for name, written in self.signals.items():
             signal = read_signal(name, written, self.physics, ledger)
@@ -43,8 +43,21 @@ class _Kind:
         if physics is None:
             return SectionSpec("", self.name, "", {}, ())
         parameters = read_parameters(self.parameters, physics, ledger)
+        if used:
+            self._require_inputs(physics, ledger)
         ordered = tuple(signals[name] for name in physics.slots if name in signals)
         return SectionSpec("", self.name, physics.name, parameters, ordered)
+
+    def _require_inputs(self, physics: PhysicsEntry, ledger: Ledger) -> None:
+        """Every input of the physics needs a driven signal; a misspelled one was noted already."""
+        if any(name not in physics.slots for name in self.signals):
+            return
+        for name, slot in physics.slots.items():
+            if Role.DRIVEN in slot.roles and name not in self.signals:
+                ledger.add_missing(
+                    ("kinds", self.name, "signals", name),
+                    f"a driven signal, since a {physics.name} has this input and nobody else moves it",
+                )
 
 
 def read_sections(document: Document, catalogue: Catalogue, ledger: Ledger) -> tuple[SectionSpec, ...]:
@@ -68,7 +81,7 @@ def read_sections(document: Document, catalogue: Catalogue, ledger: Ledger) -> t
         pattern = kind.under(table, place).resolve(ledger)
         sections.extend(_named(pattern, name) for name in names)
     for unused in (kind for name, kind in kinds.items() if name not in used):
-        unused.resolve(ledger)
+        unused.resolve(ledger, used=False)
     return tuple(sections[index] for index in row_order([section.name for section in sections]))
 
 

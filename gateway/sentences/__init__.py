@@ -28,7 +28,16 @@ from gateway.sentences.storage import (
     requests_failing,
     requests_recovered,
 )
-from gateway.sentences.wires import link_lost, link_retry, link_up, panel, permit, set_refused, write_unknown
+from gateway.sentences.wires import (
+    hand_back_unanswered,
+    link_lost,
+    link_retry,
+    link_up,
+    panel,
+    permit,
+    set_refused,
+    write_unknown,
+)
 
 __all__ = [
     "Interval",
@@ -38,6 +47,7 @@ __all__ = [
     "authority",
     "authority_denied",
     "clock_stepped",
+    "hand_back_unanswered",
     "insecure",
     "journal_behind",
     "journal_dead",

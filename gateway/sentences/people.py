@@ -5,13 +5,14 @@ from __future__ import annotations
 from gateway.sentences.notice import Kind, Level, Notice, full_stop
 
 
-def authority(before: str, after: str, who: str) -> Notice:
-    """The authority of the whole gateway changed."""
+def authority(before: str, after: str, who: str, *, overridden: bool = False) -> Notice:
+    """The authority of the whole gateway changed; `overridden` when a person insisted without a passed soak record."""
+    loud = " This plant file has no passed soak record: somebody decided to go on without one." if overridden else ""
     return Notice(
         Kind.AUTHORITY,
-        Level.WARNING,
-        f"Authority is {after} now, it was {before}; by {who}.",
-        detail={"before": before, "after": after, "who": who},
+        Level.ERROR if overridden else Level.WARNING,
+        f"Authority is {after} now, it was {before}; by {who}.{loud}",
+        detail={"before": before, "after": after, "who": who, "overridden": overridden},
     )
 
 

@@ -50,6 +50,17 @@ def write_unknown(tags: Sequence[str], k_sent: int, error: str) -> Notice:
     )
 
 
+def hand_back_unanswered(sections: Sequence[str]) -> Notice:
+    """At the end of a run, nobody knows whether the panel has these sections back."""
+    return Notice(
+        Kind.WRITE_UNKNOWN,
+        Level.WARNING,
+        f"Handing {counted(len(sections), 'section')} back to the panel was not acknowledged ({', '.join(sections)}): "
+        "without our heartbeat its watchdog takes what it has not got.",
+        detail={"sections": list(sections)},
+    )
+
+
 def set_refused(k_sent: int, refusal: str) -> Notice:
     """The panel refused a whole set of inputs."""
     return Notice(

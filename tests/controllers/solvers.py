@@ -17,7 +17,7 @@ import numpy as np
 import piqp
 from scipy import sparse
 
-from controllers.arrays import Floats
+from controllers.arrays import Floats, block_diagonal
 from controllers.plans import Measured
 from controllers.rows import RowData, RowTable
 from controllers.synthesis import Design
@@ -95,7 +95,7 @@ def row_program(offset: Floats, matrix: Floats, data: RowData) -> Program:
     none, eye = np.zeros((len(offset), count)), np.eye(count)
     nothing = np.full(count, np.inf)
     return Program(
-        p=sparse.csc_matrix(sparse.block_diag([quadratic, 2 * np.diag(data.soft_price[banded])])),
+        p=sparse.csc_matrix(block_diagonal([quadratic, 2 * np.diag(data.soft_price[banded])])),
         g=np.concatenate([linear, np.zeros(count)]),
         k=sparse.csc_matrix(
             np.block(

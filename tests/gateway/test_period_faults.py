@@ -218,6 +218,7 @@ async def test_a_slow_synthesis_freezes_everybody_and_its_result_is_thrown_away(
     assert driving.verdicts() == {Verdict.LATE}
     assert [driving.told(name) for name in driving.names] == before
     assert np.isnan(driving.history[-1].wanted).all()
+    assert driving.standing.iterate is None  # Nor does the next synthesis start from a plan a period too old.
     await driving.run()
     assert driving.states() == {State.DRIVING}
 

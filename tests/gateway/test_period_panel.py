@@ -92,7 +92,7 @@ async def test_a_link_cut_between_reading_and_writing_is_one_miss(driving: Rig) 
     driving.link.direct.gather, driving.link.direct.cut = read, False  # type: ignore[method-assign]
     await driving.run()
     assert driving.states() == {State.DRIVING}
-    assert driving.history[-1].refused_set == ""
+    assert driving.history[-1].refused_set is None
 
 
 async def test_an_unknown_write_freezes_and_is_read_back_before_anything_is_trusted(driving: Rig) -> None:
@@ -120,7 +120,7 @@ async def test_an_unknown_write_that_was_refused_is_unwritten_when_read_back(dri
     driving.link.direct.drop_answers, driving.link.refuses = False, set()
     (happened,) = await driving.run()
     assert driving.verdicts() == {Verdict.UNWRITTEN}
-    assert happened.refused_set == "it shows another counter"
+    assert happened.refused_set == (driving.k - 2, "it shows another counter")
     await driving.run()
     assert driving.states() == {State.DRIVING}
 
@@ -218,7 +218,8 @@ async def test_a_set_refused_as_a_whole_is_one_miss_for_everybody(driving: Rig) 
     assert driving.verdicts() == {Verdict.UNWRITTEN}
     driving.link.shows.clear()
     (happened,) = await driving.run()
-    assert "expired" in happened.refused_set
+    assert happened.refused_set is not None
+    assert "expired" in happened.refused_set[1]
     assert driving.states() == {State.DRIVING}
 
 
@@ -260,7 +261,9 @@ async def test_counters_from_before_a_clock_was_set_back_end_with_the_panel_driv
     await again.run(12)
     assert again.states() == {State.HOLDING}
     assert not any(again.in_charge(name) for name in again.names)
-    assert any("not newer than the last accepted" in happened.refused_set for happened in again.history)
+    words = {happened.refused_set[1] for happened in again.history if happened.refused_set is not None}
+    assert all("not newer than the last accepted" in one for one in words)
+    assert words
 
 
 # Trips and restarts ---------------------------------------------------------------------------------------------------

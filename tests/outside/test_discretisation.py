@@ -15,7 +15,7 @@ from scipy import sparse
 from scipy.linalg import expm
 from scipy.signal import cont2discrete
 
-from controllers.arrays import Floats
+from controllers.arrays import Floats, block_diagonal
 from controllers.linearise import discretise, held_coupling_error
 from controllers.network import offsets
 
@@ -59,7 +59,7 @@ def test_an_integrator_is_exact() -> None:
 def test_uncoupled_sections_are_exact_together(seed: int) -> None:
     """Without couplings a plant of many sections equals the exponential of the whole."""
     parts = [random_section(10 * seed + n, n)[0] for n in (1, 3, 2)]
-    whole = sparse.block_diag(parts, format="csr")
+    whole = block_diagonal(parts)
     none = sparse.csr_array((6, 0))
     found, _, _ = discretise(whole, none, none, offsets([1, 3, 2]), 0.4)
     np.testing.assert_allclose(found.toarray(), expm(whole.toarray() * 0.4), rtol=0, atol=1e-12)

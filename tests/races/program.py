@@ -18,7 +18,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy import sparse
 
-from controllers.arrays import Floats, Ints
+from controllers.arrays import Floats, Ints, block_diagonal
 from controllers.plans import Measured
 from controllers.rows import RowData, RowTable
 
@@ -69,7 +69,7 @@ class Program:
         bands = sparse.hstack([z_map[banded], -sparse.eye_array(len(banded))])
         return cls(
             table=table,
-            p=sparse.csc_matrix(sparse.block_diag([quadratic, slack_price], format="csc")),
+            p=sparse.csc_matrix(block_diagonal([quadratic, slack_price])),
             k=sparse.csc_matrix(sparse.vstack([dynamics, limited, bands], format="csc")),
             equations=steps * n,
             inputs=slice(steps * n, steps * n + m),
@@ -84,6 +84,14 @@ class Program:
         """A measurement of nothing going on, for setting solvers up."""
         net = self.table.network
         return Measured(np.zeros(net.a.shape[0]), np.zeros(net.e.shape[1]), np.zeros(net.b.shape[1]))
+
+    @property
+    def section_by_section(self) -> Ints:
+        """Order of the variables that puts each section's whole trajectory together: the program is then banded."""
+        net, steps = self.table.network, self.table.horizon
+        of_state = np.repeat(np.arange(net.size), np.diff(net.x_at))
+        sections = [np.tile(of_state, steps), np.tile(net.section_of_input(), steps), self.table.section[self.banded]]
+        return np.argsort(np.concatenate(sections), kind="stable").astype(np.int64)
 
     def numbers(self, measured: Measured, data: RowData) -> Numbers:
         """Return the vectors of one period."""

@@ -7,7 +7,7 @@ from math import isnan
 from pathlib import Path
 
 import pytest
-from asyncua import Client
+from asyncua.client.client import Client
 
 from gateway.hold import State
 from gateway.journal import PeriodRecord

@@ -151,3 +151,11 @@ def test_sections_share_no_state() -> None:
     one, two, _ = plant_of(GOOD).sections
     assert one.parameters == two.parameters
     assert one.parameters is not two.parameters
+
+
+def test_an_input_that_nobody_drives_is_a_mistake() -> None:
+    """It is named once, with the physics that has it."""
+    text = GOOD[: GOOD.index("[kinds.oven.signals.heater]")] + GOOD[GOOD.index("[[sections]]") :]
+    mistake = only_mistake(text)
+    assert mistake.place == "kinds.oven.signals.heater"
+    assert "a driven signal" in mistake.allowed

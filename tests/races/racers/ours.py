@@ -34,5 +34,5 @@ ENTRY = Entry(
     package="controllers",
     enter=Running,
     tolerances=tuple(10 ** (-k / 3) for k in range(4, 19)),
-    tunings=tuple({"rho": rho, "relax": relax, "chunk": 3} for rho in (0.3, 1.0, 3.0, 10.0) for relax in (1.6, 1.8)),
+    tunings=tuple({"rho": rho, "relax": relax, "chunk": 3} for rho in (1.0, 2.5, 5.0, 10.0) for relax in (1.6, 1.8)),
 )

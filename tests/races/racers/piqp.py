@@ -1,7 +1,12 @@
-"""PIQP, proximal interior point: symbolic factorisation and scaling kept, vectors updated. It has no warm start."""
+"""PIQP, proximal interior point: symbolic factorisation and scaling kept, vectors updated. It has no warm start.
+
+One of its factorisations is made for problems in stages. It sees stages in the order of the variables, so it is given
+them section by section: a row of sections is then as good as a row of stages.
+"""
 
 from __future__ import annotations
 
+import numpy as np
 from scipy import sparse
 
 from controllers.plans import Measured
@@ -22,12 +27,13 @@ class Running:
         settings.preconditioner_reuse_on_update = True
         settings.kkt_solver = getattr(piqp.KKTSolver, setup.tuning["kkt_solver"])
         self._solved = piqp.PIQP_SOLVED
-        self._program = program
+        self._program, self._order = program, program.section_by_section
+        self._inputs = np.argsort(self._order)[program.inputs]
         numbers, e = program.numbers(program.rest, usual), program.equations
-        rows = sparse.csr_array(program.k)
+        rows = sparse.csr_array(program.k)[:, self._order]
         self._solver.setup(
-            program.p,
-            numbers.g,
+            sparse.csc_matrix(sparse.csr_array(program.p)[self._order][:, self._order]),
+            numbers.g[self._order],
             sparse.csc_matrix(rows[:e]),
             numbers.lower[:e],
             sparse.csc_matrix(rows[e:]),
@@ -38,9 +44,9 @@ class Running:
     def solve(self, measured: Measured, data: RowData) -> Answer:
         """Update vectors and solve."""
         numbers, e = self._program.numbers(measured, data), self._program.equations
-        self._solver.update(c=numbers.g, b=numbers.lower[:e], h_l=numbers.lower[e:], h_u=numbers.upper[e:])
+        self._solver.update(c=numbers.g[self._order], b=numbers.lower[:e], h_l=numbers.lower[e:], h_u=numbers.upper[e:])
         status, result = self._solver.solve(), self._solver.result
-        return Answer(result.x[self._program.inputs], int(result.info.iter), status == self._solved)
+        return Answer(result.x[self._inputs], int(result.info.iter), status == self._solved)
 
     def forget(self) -> None:
         """Nothing is remembered."""
