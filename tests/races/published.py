@@ -129,16 +129,11 @@ class BySolver:
         quadratic = np.zeros((width + 1, width + 1))
         quadratic[:width, :width] = 2 * data.price[r] * np.outer(v, v) + self._rho * np.eye(width)
         quadratic[width, width] = 2 * max(float(data.soft_price[r]), 1e-9)
+        ends = np.array([[data.lower[r], data.upper[r]], [data.soft_lower[r], data.soft_upper[r]]])
+        kept = np.isfinite(ends).any(axis=1)
+        constraints = np.array([np.append(v, 0.0), np.append(v, -1.0)])[kept]
         solver = self._piqp.DenseSolver()
-        solver.setup(
-            quadratic,
-            np.zeros(width + 1),
-            None,
-            None,
-            np.array([np.append(v, 0.0), np.append(v, -1.0)]),
-            np.array([data.lower[r], data.soft_lower[r]]),
-            np.array([data.upper[r], data.soft_upper[r]]),
-        )
+        solver.setup(quadratic, np.zeros(width + 1), None, None, constraints, *ends[kept].T)
         return solver
 
 
