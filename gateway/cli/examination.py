@@ -7,6 +7,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from math import isfinite, isnan
 
+from controllers import advise
 from controllers.responses import least_locality
 from controllers.spectrum import closed_loop_radius
 from gateway.cli.dialling import Reached
@@ -37,6 +38,7 @@ class Examination:
         observer_radius: of the assembled observer.
         coupling_error_spans: one-step error of holding the couplings.
         forecast: of the work per period on this host.
+        advice: what the plant lacks or cannot do by itself, one sentence each.
         unsafe: one sentence each.
         fingerprint: of plant file and design.
     """
@@ -53,6 +55,7 @@ class Examination:
     observer_radius: float
     coupling_error_spans: float
     forecast: Forecast
+    advice: tuple[str, ...]
     unsafe: tuple[str, ...]
     fingerprint: str
 
@@ -84,6 +87,7 @@ def examine(design: PlantDesign, clock: Clock) -> Examination:
         observer_radius=design.observer.radius,
         coupling_error_spans=design.coupling_error,
         forecast=forecast(design, clock),
+        advice=tuple(finding.text for finding in advise(design.network, design.synthesis.locality)),
         unsafe=tuple(warnings_of(plant)),
         fingerprint=design.fingerprint,
     )
@@ -103,6 +107,7 @@ def lines_of(plant: Plant, found: Examination) -> list[tuple[str, str]]:
         ("held couplings", f"one-step error {found.coupling_error_spans:.1e} of span"),
         ("work per period", _work(found.forecast)),
         *(("site " + site.name, site_line(plant, site)) for site in plant.sites.values()),
+        *(("advice", f"! {sentence}") for sentence in found.advice),
         *(("unsafe", f"! {sentence}") for sentence in found.unsafe or ()),
         ("fingerprint", found.fingerprint),
     ]

@@ -223,3 +223,12 @@ def test_what_a_dialled_site_answered_in_words() -> None:
 
 def _with_locality(locality: int) -> Plant:
     return read_plant_text(PLANT.replace("locality = 1", f"locality = {locality}"), "three.toml")
+
+
+def test_a_plant_in_two_pieces_is_said(found: Examination) -> None:
+    """Every piece begins somewhere; a plant in one piece has nothing to say."""
+    assert found.advice == ()
+    two = build_design(read_plant_text(PLANT.replace('along = "tank-{1..3}"', 'along = "tank-{1..2}"'), "two.toml"))
+    lines = [how for what, how in lines_of(two.plant, examine(two, RealClock())) if what == "advice"]
+    assert len(lines) == 2
+    assert all("begins a plant of" in how for how in lines)
