@@ -14,7 +14,7 @@ from time import perf_counter
 
 from tests.races.contest import Contest
 from tests.races.course import Stretch
-from tests.races.race import Entrant, Lap, alone, enter, enter_weighed, judged, worst_error
+from tests.races.race import Entrant, Lap, alone, enter, enter_weighed, judged, too_slow, worst_error
 from tests.races.racers.protocol import Entry, Setup
 
 TIGHTENED = 10**-0.5
@@ -92,4 +92,4 @@ def verify(
 
 
 def _too_slow(laps: Sequence[Lap], patience: Patience) -> bool:
-    return laps[-1].duration_s > patience.period_s
+    return too_slow(laps[-1], patience.period_s)

@@ -1,4 +1,7 @@
-"""What explicit rows cost: the same passes on the same plant with and without bands and limits, paired."""
+"""What explicit rows cost: the same passes on the same plant with and without bands and limits, paired.
+
+Without means infinite limits and unpriced bands in the same kernels: nothing ever binds, no branch is ever taken.
+"""
 
 from __future__ import annotations
 

@@ -39,11 +39,11 @@ class Programme:
 
     kinds: tuple[str, ...] = ("zones", "masses")
     sizes: tuple[int, ...] = (30, 100, 300, 1000)
-    horizons: tuple[int, ...] = (10, 20, 40)
+    horizons: tuple[int, ...] = (10, 20)
     accuracies: tuple[float, ...] = (1e-3,)
     most_steps: int = 10_000
-    periods: int = 12
-    repeats: int = 5
+    periods: int = 10
+    repeats: int = 3
     alike: bool = False
     patience: Patience = field(default_factory=Patience)
     building_s: float = 120.0

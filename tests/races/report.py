@@ -79,8 +79,15 @@ def _races(results: Sequence[Result]) -> Iterator[tuple[object, ...]]:
             yield (
                 case.kind, case.size, case.horizon, racer, f"{middle:.3g}", f"{low:.3g} .. {high:.3g}",
                 f"{worst:.3g}", f"{worst / middle:.1f}", f"{median(each.iterations for each in theirs):.0f}",
-                f"{result.memory_bytes[racer] / 1e6:.1f}", f"{max(each.error_spans for each in theirs):.0e}", *ratio,
+                f"{result.memory_bytes[racer] / 1e6:.1f}", _error(theirs, case.accuracy), *ratio,
             )  # fmt: skip
+
+
+def _error(laps: Sequence[Lap], accuracy: float) -> str:
+    """Worst error, and how many laps missed the accuracy though the setup had been verified."""
+    missed = sum(each.error_spans > accuracy for each in laps)
+    worst = f"{max(each.error_spans for each in laps):.0e}"
+    return f"{worst}, **missed {missed} of {len(laps)}**" if missed else worst
 
 
 def paired(theirs: Sequence[Lap], ours: Sequence[Lap]) -> list[float]:

@@ -28,11 +28,21 @@ class Running:
         self._before = None
 
 
+def held_bytes(contest: Contest) -> int:
+    """Bytes of the design's arrays, each counted once however many sections share it."""
+    design, flat = contest.design, contest.design.flat
+    arrays = [flat.touched, flat.at, flat.basis, flat.basis_at, flat.freedom, design.copies]
+    for response in design.responses:
+        arrays += [response.rows, response.gain, response.basis]
+    return sum({id(array): array.nbytes for array in arrays}.values())
+
+
 ENTRY = Entry(
     name="this synthesis",
     family=Family.LOCALIZED,
     package="controllers",
     enter=Running,
     tolerances=tuple(10 ** (-k / 3) for k in range(4, 19)),
+    held_bytes=held_bytes,
     tunings=tuple({"rho": rho, "relax": relax, "chunk": 3} for rho in (1.0, 2.5, 5.0, 10.0) for relax in (1.6, 1.8)),
 )

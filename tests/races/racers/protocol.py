@@ -70,6 +70,7 @@ class Entry:
         enter: sets the racer up for one contest, factorisation included.
         tolerances: loosest first.
         tunings: settings that a careful user would try.
+        held_bytes: counts what it holds in memory; left out, the growth of the process is taken.
     """
 
     name: str
@@ -78,6 +79,7 @@ class Entry:
     enter: Callable[[Contest, Setup], Racer]
     tolerances: tuple[float, ...]
     tunings: tuple[Mapping[str, Any], ...] = ({},)
+    held_bytes: Callable[[Contest], int] | None = None
 
 
 def installed(entry: Entry) -> bool:
