@@ -12,7 +12,7 @@ from tests.races.course import Stretch, course
 from tests.races.limits import RowCost, row_cost
 from tests.races.published import Curve, curves
 from tests.races.race import Entrant, Lap, race
-from tests.races.racers.protocol import Entry, Setup, installed
+from tests.races.racers.protocol import Entry, installed
 from tests.races.section import Section, one_section
 
 CALIBRATED_AT = 30
@@ -112,9 +112,9 @@ class _Small:
 
     def calibrate(
         self, entry: Entry, accuracy: float, patience: Patience, say: Callable[[str], None]
-    ) -> Calibrated | Retired:
+    ) -> tuple[Calibrated, ...] | Retired:
         found = calibrate(self.contest, entry, self.stretches, accuracy, patience)
-        say(f"  {entry.name}: {found.setup if isinstance(found, Calibrated) else found.reason}")
+        say(f"  {entry.name}: {found.reason if isinstance(found, Retired) else found[0].setup}")
         return found
 
 
@@ -126,7 +126,7 @@ def _build(contest: Contest) -> float:
 
 def _run(
     case: Case,
-    calibrated: Sequence[tuple[Entry, Calibrated | Retired]],
+    calibrated: Sequence[tuple[Entry, tuple[Calibrated, ...] | Retired]],
     absent: tuple[Retired, ...],
     small: _Small,
     programme: Programme,
@@ -164,7 +164,7 @@ def _run(
 def _ready(
     contest: Contest,
     entry: Entry,
-    found: Calibrated | Retired,
+    found: tuple[Calibrated, ...] | Retired,
     stretches: Sequence[Stretch],
     case: Case,
     grown: float,
@@ -175,8 +175,7 @@ def _ready(
         return found
     if entry.package == "controllers" and not built:
         return Retired(entry.name, f"its design would take more than {programme.building_s:.0f} s to build")
-    if found.period_s * grown > programme.patience.period_s:
-        return Retired(entry.name, f"would take some {found.period_s * grown:.0f} s for one period")
-    return verify(
-        contest, entry, Setup(found.setup.tolerance, found.setup.tuning), stretches, case.accuracy, programme.patience
-    )
+    expected_s = found[0].period_s * grown
+    if expected_s > programme.patience.period_s:
+        return Retired(entry.name, f"would take some {expected_s:.0f} s for one period")
+    return verify(contest, entry, found, stretches, case.accuracy, programme.patience)
