@@ -39,7 +39,7 @@ class Programme:
 
     kinds: tuple[str, ...] = ("zones", "masses")
     sizes: tuple[int, ...] = (30, 100, 300, 1000)
-    horizons: tuple[int, ...] = (10, 20)
+    horizons: tuple[int, ...] = (10,)
     accuracies: tuple[float, ...] = (1e-3,)
     most_steps: int = 10_000
     periods: int = 10
