@@ -16,7 +16,6 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Mapping
 from dataclasses import asdict, dataclass, field
 from importlib.metadata import version
 
@@ -372,18 +371,6 @@ def _scaling(order: _Order, physics: PhysicsNetwork, point: OperatingPoint, x_un
         w_zero=point.w,
         w_unit=w_unit,
     )
-
-
-def input_limits(design: PlantDesign) -> Mapping[str, tuple[float, float]]:
-    """Hard limits of every driven signal, scaled deviations, by quantity name."""
-    scaling = design.scaling
-    return {
-        signal.tag: (
-            (signal.hard[0] - scaling.u_zero[k]) / scaling.u_width[k],
-            (signal.hard[1] - scaling.u_zero[k]) / scaling.u_width[k],
-        )
-        for k, signal in enumerate(design.inputs)
-    }
 
 
 def _fingerprint(plant: Plant, synthesis: Design) -> str:

@@ -14,8 +14,8 @@ Symbols: k period index; all counts in periods. `HoldSpec` is the numbers of the
 `latch_window`, `clear_for`.
 
 Everything here is a pure function of its arguments. The period therefore calls `advance` as often as it needs to from
-the same starting point: to learn whether a section may drive at all (`may_drive`), after judging to know what to
-write, and once more with `unwritten` when that write failed. Only the last result is kept.
+the same starting point: before the synthesis to learn which sections it may move, after judging to know what to write,
+and once more with `unwritten` when that write failed. Only the last result is kept.
 """
 
 from __future__ import annotations
@@ -280,14 +280,6 @@ def advance(
         else None
     )
     return section, transition, tuple(refusals)
-
-
-def may_drive(section: SectionHold, settings: HoldSpec, k: int, asks: Sequence[Ask] = ()) -> bool:
-    """Whether the section's synthesis is written in period `k` if that period is on time.
-
-    Decides before the synthesis which sections' inputs it may move and which are given, held where they are.
-    """
-    return advance(section, settings, k, Verdict.ON_TIME, asks)[0].state is State.DRIVING
 
 
 def _ask(

@@ -9,7 +9,6 @@ from __future__ import annotations
 from collections.abc import Mapping
 from datetime import UTC, datetime
 from enum import StrEnum
-from math import nan
 from typing import Self
 
 import msgspec
@@ -266,10 +265,6 @@ class Loss(msgspec.Struct, frozen=True, kw_only=True):
     last_ns: int
     wall_ns: int = 0
     seq: int = 0
-
-
-NO_NUMBER = nan
-"""What stands in `estimates`, `wanted` and `written` where there is no number."""
 
 
 def whole(text: str) -> str:

@@ -12,7 +12,7 @@ from hypothesis import strategies as st
 
 from controllers import NotLocalizableError
 from controllers.arrays import Floats
-from gateway.design import PlantDesign, build_design, input_limits, move_of, operating_point_of, physics_of
+from gateway.design import PlantDesign, build_design, move_of, operating_point_of, physics_of
 from gateway.plantfile.plant import Plant, Role, Signal
 from sim_plant.plant import PlantState, advance
 
@@ -128,13 +128,6 @@ def test_rows_price_and_limit_what_the_plant_file_says(tarn_row: PlantDesign) ->
     assert data.price[move] == pytest.approx(np.full(20, 0.3))
     assert data.upper[move] == pytest.approx(np.full(20, 0.1))
     assert table.horizon == 20
-
-
-def test_hard_limits_are_deviations_from_the_operating_point(tarn_row: PlantDesign) -> None:
-    """0..100 % about where the pump rests."""
-    low, high = input_limits(tarn_row)["tank-4.pump"]
-    rest = float(tarn_row.scaling.u_zero[3])
-    assert (low, high) == pytest.approx((-rest / 100, (100 - rest) / 100))
 
 
 def test_the_assembled_observer_is_stable(tarn_row: PlantDesign) -> None:

@@ -22,7 +22,6 @@ from gateway.hold import (
     advance,
     diagram,
     diagram_markdown,
-    may_drive,
     start,
     writes,
 )
@@ -265,7 +264,7 @@ def test_an_unclean_end_holds_in_the_first_period(verdict: Verdict) -> None:
 def test_an_unclean_end_never_drives_without_a_rearm() -> None:
     """Not even its first period, however on time, may drive."""
     section = start(100, taken=True, ended_cleanly=False)
-    assert not may_drive(section, SPEC, 100)
+    assert advance(section, SPEC, 100, Verdict.ON_TIME)[0].state is not D
     section = run(section, [Verdict.ON_TIME] * 6)
     section, _, refusals = advance(section, SPEC, 106, Verdict.ON_TIME, [Ask.REARM])
     assert (section.state, refusals) == (F, ())
@@ -369,7 +368,7 @@ class HoldMachine(RuleBasedStateMachine):
         """Account for one period."""
         k = self.section.k + gap
         self.before = self.section
-        could = may_drive(self.section, self.spec, k, asks)
+        could = advance(self.section, self.spec, k, Verdict.ON_TIME, asks)[0].state is D
         self.section, transition, refusals = advance(self.section, self.spec, k, verdict, asks)
         self.history.append((k, verdict, tuple(asks)))
         if transition is None:
